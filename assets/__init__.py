@@ -1,0 +1,1 @@
+"""Demo projects with their meshes. All data here is invented."""

@@ -1,0 +1,1 @@
+"""Mechanisms, their motion and what can be read from it. Knows no plugin, no file format, no pixel."""

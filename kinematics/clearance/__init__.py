@@ -1,0 +1,1 @@
+"""Solids and the distances between them over the motion. Plain arrays in and out."""
