@@ -229,7 +229,7 @@ class Tree:
                 angle = np.sqrt(dot_first(vector, vector))
                 too_long = angle > GREATEST_TURN
                 if too_long.any():
-                    vector = vector * np.where(too_long, GREATEST_TURN / angle, 1.0)
+                    vector = vector * np.where(too_long, GREATEST_TURN / np.maximum(angle, GREATEST_TURN), 1.0)
                 turns[link.slot] = multiply_first(exponential_first(vector), state.turns[link.slot])
                 places[link.slot] += step[link.column + 3 : link.column + 6]
             else:

@@ -8,6 +8,7 @@ import importlib.util
 import sys
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from types import ModuleType
 from typing import TYPE_CHECKING, Any
@@ -62,7 +63,7 @@ def load_registry(extra_files: Iterable[Path] = ()) -> Registry:
     for entry, distribution in _entry_points():
         _register(manager, f"{distribution}:{entry.name}", distribution, entry.load, names, broken)
     for path in extra_files:
-        _register(manager, str(path), path.name, lambda path=path: _load_file(path), names, broken)
+        _register(manager, str(path), path.name, partial(_load_file, path), names, broken)
     return _collect(manager, names, broken)
 
 

@@ -1,0 +1,1 @@
+"""What can be written from a project: pictures, movies, tables. Each writes all of a file or nothing."""

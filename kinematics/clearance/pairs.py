@@ -1,0 +1,97 @@
+"""Which solids must stay apart: from rules with names and patterns, or every two that are not joined."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from difflib import get_close_matches
+from itertools import combinations
+from typing import Protocol
+
+from knucklepath.kinematics.clearance.solids import Solid
+from knucklepath.kinematics.errors import KnucklepathError
+from knucklepath.kinematics.wheel import Corner
+
+
+class PairError(KnucklepathError):
+    """A clearance names something that is not there."""
+
+
+class Rule(Protocol):
+    """What must stay apart: two names, either of them "*", and the gap asked for, mm."""
+
+    @property
+    def a(self) -> str:
+        """One name."""
+
+    @property
+    def b(self) -> str:
+        """The other name."""
+
+    @property
+    def gap(self) -> float:
+        """The gap asked for, mm."""
+
+
+@dataclass(frozen=True)
+class Pair:
+    """Two solids and the gap asked of them, mm."""
+
+    a: Solid
+    b: Solid
+    required_mm: float
+
+
+def pairs_to_check(corner: Corner, solids: Sequence[Solid], rules: Sequence[Rule]) -> tuple[Pair, ...]:
+    """Resolve rules into pairs of solids.
+
+    A name is a solid's, or a body's (then it means every solid on that body). "*" means every solid that is not
+    joined to the other one. A pair that is named is always checked; where two rules speak of one pair the greater
+    gap counts, a rule with both names going before one with "*". Without rules every two solids that are not joined
+    are checked against touching. Solids that do not move against each other because both stand on the chassis are
+    left out.
+
+    Raises
+    ------
+    PairError : a name is unknown; the message gives the nearest one.
+    """
+    if not rules:
+        return tuple(Pair(a, b, 0.0) for a, b in combinations(solids, 2) if _may_meet(corner, a, b))
+    named: dict[frozenset[str], Pair] = {}
+    matched: dict[frozenset[str], Pair] = {}
+    for rule in rules:
+        wild = "*" in (rule.a, rule.b)
+        into = matched if wild else named
+        for a in _meant(corner, solids, rule.a):
+            for b in _meant(corner, solids, rule.b):
+                if a.name == b.name or (wild and not _may_meet(corner, a, b)):
+                    continue
+                key = frozenset((a.name, b.name))
+                if key not in into or into[key].required_mm < rule.gap:
+                    into[key] = Pair(a, b, rule.gap)
+    return tuple({**matched, **named}.values())
+
+
+def _may_meet(corner: Corner, a: Solid, b: Solid) -> bool:
+    return not corner.joined(a.body, b.body)
+
+
+def _meant(corner: Corner, solids: Sequence[Solid], name: str) -> list[Solid]:
+    """The solids that a name means."""
+    if name == "*":
+        return list(solids)
+    own = [solid for solid in solids if solid.name == name]
+    if own:
+        return own
+    on_body = [solid for solid in solids if solid.body == name]
+    if on_body:
+        return on_body
+    if name in corner.body_names:
+        on_body = [solid for solid in solids if corner.body(solid.body) == corner.body(name) and solid.body != "wheel"]
+        if on_body:
+            return on_body
+        raise PairError(f"nothing stands on '{name}', so no gap to it can be measured; give it a part or show its rod")
+    known = list(dict.fromkeys([*(solid.name for solid in solids), *(solid.body for solid in solids)]))
+    near = get_close_matches(name, known, n=1)
+    hint = f"did you mean '{near[0]}'? " if near else ""
+    raise PairError(f"there is no part '{name}'; {hint}Names: {', '.join(known)}, or \"*\" for all")

@@ -1,0 +1,1 @@
+"""One file per command. Each is imported only when its command is called."""

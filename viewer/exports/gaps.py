@@ -1,0 +1,59 @@
+"""Clearance results as JSON and in words."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Sequence
+from typing import Any
+
+from knucklepath.kinematics.clearance.sampled import Gap
+from knucklepath.kinematics.motion import Motion
+from knucklepath.viewer import CAUTION
+from knucklepath.viewer.exports.tables import figure
+from knucklepath.viewer.project import Project
+
+
+def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float) -> str:
+    """The result as JSON text, worst pair first."""
+    travel, rack = motion.travel_mm, motion.rack_mm
+    result: dict[str, Any] = {
+        "motion": {
+            "travel_mm": [float(travel.min()), float(travel.max())],
+            "rack_mm": [float(rack.min()), float(rack.max())],
+        },
+        "tolerance_mm": tolerance_mm,
+        "method": "sampled",
+        "poses": int(motion.reached.sum()),
+        "caution": CAUTION,
+        "pairs": [_pair(gap) for gap in gaps],
+    }
+    return json.dumps(result, indent=1, allow_nan=False) + "\n"
+
+
+def _pair(gap: Gap) -> dict[str, Any]:
+    pair: dict[str, Any] = {
+        "between": list(gap.between),
+        "required_mm": gap.required_mm,
+        "verdict": gap.verdict,
+        "gap_mm": gap.gap_mm,
+        "proven_gap_mm": gap.proven_gap_mm,
+        "travel_mm": gap.travel_mm,
+        "rack_mm": gap.rack_mm,
+        "point_a_mm": [float(value) for value in gap.point_a_mm],
+        "point_b_mm": [float(value) for value in gap.point_b_mm],
+        "evaluations": gap.evaluations,
+    }
+    if gap.note:
+        pair["note"] = gap.note
+    return pair
+
+
+def pose_text(project: Project, gap: Gap) -> str:
+    """The pose of a gap in words: "travel +60.0 mm, rack −35.0 mm"."""
+    text = f"travel {_signed(gap.travel_mm)} mm"
+    return f"{text}, rack {_signed(gap.rack_mm)} mm" if project.corner.steered else text
+
+
+def _signed(value: float) -> str:
+    text = figure(value, "mm")
+    return text if text.startswith("−") or text == "0.0" else f"+{text}"
