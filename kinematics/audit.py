@@ -100,21 +100,48 @@ def _rank(matrix: Array) -> int:
 
 def _still_free(closure: Closure, square: Array, counted: Mobility, free: int, surplus: int) -> MechanismError:
     """Build the error for a freedom that no input sets: which body, which motion."""
-    null = np.linalg.svd(square)[2][-free:]
-    # the simplest vector of the null space: a freedom of one body alone is found as such
-    motion = _simplest(null) / closure.tree.scale[: closure.tree.unknowns]
-    bodies = [
-        link.name
-        for link in closure.tree.links.values()
-        if link.column < closure.tree.unknowns and _moves(closure, link.name, motion)
-    ]
-    described = [_describe(closure, name, motion) for name in bodies[:3]]
+    alone = _free_alone(closure)
+    if alone:
+        bodies = list(alone)
+        described = [_describe(closure, name, motion) for name, motion in alone.items()]
+    else:
+        null = np.linalg.svd(square)[2][-free:]
+        motion = _simplest(null) / closure.tree.scale[: closure.tree.unknowns]
+        bodies = [
+            link.name
+            for link in closure.tree.links.values()
+            if link.column < closure.tree.unknowns and _moves(closure, link.name, motion)
+        ]
+        described = [_describe(closure, name, motion) for name in bodies]
     count = "a freedom" if free == 1 else f"{free} freedoms"
-    setting = "no input" if counted.inputs == 0 else "none of its inputs"
-    text = f"the mechanism keeps {count} that {setting} sets: {'; '.join(described)}"
+    text = f"the mechanism keeps {count} that no input sets: {'; '.join(described[:3])}"
     if surplus:
-        text += f"; at the same time {_and_joints(closure, square, surplus)} hold one another twice"
-    return MechanismError(text + ". Add a joint that stops it", body=bodies[0] if bodies else None)
+        double = _surplus_joints(closure, square, surplus)
+        if double == ["input travel"]:
+            text += ". Travel does not move with it: the wheel centre would have to rise"
+        else:
+            text += f"; {' and '.join(double)} hold one and the same motion"
+    return MechanismError(text + ". Add or move a joint so that it is stopped", body=bodies[0] if bodies else None)
+
+
+def _free_alone(closure: Closure) -> dict[str, Array]:
+    """Bodies that the joints let move while every other body stands still, and how (unknowns,)."""
+    joints = _joint_rows(closure)[:, : closure.tree.unknowns]
+    scale = closure.tree.scale[: closure.tree.unknowns]
+    found: dict[str, Array] = {}
+    for name, link in closure.tree.links.items():
+        if link.column >= closure.tree.unknowns:
+            continue
+        columns = slice(link.column, link.column + (6 if link.kind == "free" else 1))
+        own = joints[:, columns]
+        _, values, right = np.linalg.svd(own)
+        greatest = max(float(np.abs(joints).max(initial=0.0)), 1e-300)
+        rank = int((values > RANK_SHARE * greatest).sum())
+        if rank < own.shape[1]:
+            motion = np.zeros(closure.tree.unknowns)
+            motion[columns] = _simplest(right[rank:])
+            found[name] = motion / scale
+    return found
 
 
 def _simplest(null: Array) -> Array:
@@ -190,14 +217,18 @@ def _direction(vector: Array) -> str:
 
 
 def _one_too_many(closure: Closure, square: Array, counted: Mobility, surplus: int) -> MechanismError:
+    """Build the error for joints that hold what others hold already; rods are named first, as what can go alone."""
     names = _surplus_joints(closure, square, surplus)
-    joints = [joint.name for joint in closure.mechanism.joints if joint.name in names]
-    listed = ", ".join(names[:-1]) + " or " + names[-1] if len(names) > 1 else names[0]
-    what = "one joint is" if surplus == 1 else f"{surplus} joint equations are"
+    joints = [joint for joint in closure.mechanism.joints if joint.name in names]
+    rods = [joint.name for joint in joints if joint.equations == 1]
+    listed = rods or [joint.name for joint in joints] or names
+    what = "one joint is too many" if surplus == 1 else f"{surplus} joint equations are too many"
+    which = listed[0] if len(listed) == 1 else ", ".join(listed[:-1]) + " or " + listed[-1]
+    freedoms = f"{counted.by_count} freedom{'' if counted.by_count == 1 else 's'} by count"
     return MechanismError(
-        f"{what} too many: {listed} ({counted.by_count} freedoms by count for {counted.inputs} inputs). "
+        f"{what}: {which} ({freedoms} for {counted.inputs} input{'' if counted.inputs == 1 else 's'}). "
         "Take one away, or give the mechanism another body to move",
-        joint=joints[-1] if joints else None,
+        joint=listed[-1],
     )
 
 
@@ -207,7 +238,3 @@ def _surplus_joints(closure: Closure, square: Array, surplus: int) -> list[str]:
     weight = np.abs(left).max(axis=1)
     least = TAKES_PART * weight.max()
     return [name for name, rows in closure.rows.items() if weight[rows].max() > least]
-
-
-def _and_joints(closure: Closure, square: Array, surplus: int) -> str:
-    return " and ".join(_surplus_joints(closure, square, surplus))

@@ -1,246 +1,138 @@
-"""Mesh files read and checked. trimesh is imported when the first one is read. Knows no suspension."""
+"""Meshes loaded and made sound: finite, merged, without triangles that have no area. Knows no project.
+
+trimesh reads the files; it is imported when the first mesh is loaded.
+"""
 
 from __future__ import annotations
 
-import struct
+import io
+import warnings
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, TypeAlias
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from knucklepath.kinematics.errors import MeshError
-from knucklepath.viewer.reader import UNITS
+from knucklepath.viewer.mesh_files import MOST_TRIANGLES, check_mesh_file, inside_folder, too_many
+from knucklepath.viewer.source import printable
 
-Array: TypeAlias = NDArray[np.float64]
+__all__ = ["MeshData", "inside_folder", "load_mesh"]
 
-SUFFIXES = (".stl", ".obj", ".ply", ".glb", ".3mf")
-#: More triangles than this are a whole car's CAD dump, not a part.
-MOST_TRIANGLES = 5_000_000
-#: A file larger than this cannot be below that many triangles in any of the formats.
-MOST_BYTES = 1_500_000_000
-#: A part's diagonal, mm: outside this the unit is wrong, between the second pair it is believable.
-POSSIBLE_MM = (2.0, 10_000.0)
-BELIEVABLE_MM = (15.0, 4_000.0)
-#: Units that a format fixes by its standard: glTF 2.0 is in metres.
-FORMAT_UNITS = {".glb": "m"}
-#: Double area over the longest side squared below which a triangle has no direction that can be trusted.
-SLIVER = 1e-9
-#: Unit names of the 3MF core specification.
-THREE_MF_UNITS = {"millimeter": 1.0, "centimeter": 10.0, "meter": 1000.0, "inch": 25.4, "foot": 304.8, "micron": 0.001}
+Array = NDArray[np.float64]
+
+#: Height of a triangle over its longest side at or below which it has no area: single precision, as in STL, cannot
+#: tell its normal.
+FLAT_SHARE = 1e-7
+#: Unit names of the 3MF core specification, in mm.
+THREE_MF_UNITS = {"micron": 1e-3, "millimeter": 1.0, "centimeter": 10.0, "inch": 25.4, "foot": 304.8, "meter": 1000.0}
 
 
 @dataclass(frozen=True)
-class LoadedMesh:
-    """A sound mesh: vertices (n, 3) in mm, faces (m, 3), and how many degenerate triangles were dropped."""
+class MeshData:
+    """A sound mesh in the file's own unit.
+
+    vertices (n, 3); faces (m, 3); dropped_triangles : how many had no area; mm_per_unit : stated by the file itself
+    (3MF), or None.
+    """
 
     vertices: Array
     faces: NDArray[np.int32]
-    dropped: int
+    dropped_triangles: int
+    mm_per_unit: float | None
 
 
-def inside_folder(folder: Path, name: str) -> Path:
-    """Path of a file that a project names, which must lie inside the project's folder.
-
-    Raises
-    ------
-    MeshError : the path is absolute, climbs out, leads out through a link, or nothing is there.
-    """
-    given = Path(name)
-    if given.is_absolute() or given.drive or "\\" in name or "\0" in name:
-        raise MeshError("must be a path inside the project folder, with forward slashes", file=_printable(name))
-    if ".." in given.parts:
-        raise MeshError("leads out of the project folder ('..'); copy the file into it", file=name)
-    path = folder / given
-    try:
-        real, root = path.resolve(strict=True), folder.resolve()
-    except FileNotFoundError:
-        near = _near_files(folder, given)
-        raise MeshError(f"is not there{near}", file=name) from None
-    except (OSError, RuntimeError) as error:
-        raise MeshError(f"cannot be opened: {error}", file=name) from None
-    if not real.is_relative_to(root):
-        raise MeshError("is a link out of the project folder; copy the file itself into it", file=name)
-    if not real.is_file():
-        raise MeshError("is not a file", file=name)
-    return real
-
-
-def _printable(name: str) -> str:
-    return name.replace("\0", "\\0")
-
-
-def _near_files(folder: Path, given: Path) -> str:
-    from difflib import get_close_matches
-
-    place = (folder / given).parent
-    try:
-        names = sorted(entry.name for entry in place.iterdir()) if place.is_dir() else []
-    except OSError:
-        names = []
-    near = get_close_matches(given.name, names, n=1)
-    return (
-        f"; did you mean '{(given.parent / near[0]).as_posix()}'?" if near else f" (looked in {place.name or place}/)"
-    )
-
-
-def load_mesh(path: Path, name: str, units: str | None, default_units: str) -> LoadedMesh:
-    """Read a mesh file, in mm.
+def load_mesh(path: Path, name: str | None = None) -> MeshData:
+    """Load a mesh file.
 
     Parameters
     ----------
-    path, name : the file, and how the project calls it.
-    units : stated for this part, or None: then the format's own unit counts, or else ``default_units``.
+    path : STL (ASCII or binary), OBJ, PLY, GLB or 3MF; several objects in one file become one mesh.
+    name : how messages call it; its path if None.
 
     Raises
     ------
-    MeshError : with the count and the remedy, when the file is no usable mesh.
+    MeshError : it cannot be read; it is cut short, empty, too large, or has coordinates that are not finite.
     """
-    suffix = path.suffix.lower()
-    if suffix not in SUFFIXES:
-        raise MeshError(f"cannot be read: save it as {', '.join(s[1:].upper() for s in SUFFIXES)}", file=name)
+    called = printable(str(path) if name is None else name)
     try:
-        size = path.stat().st_size
-        with path.open("rb") as file:
-            head = file.read(1024)
+        check_mesh_file(path, called)
+        pieces, unit = _read(path, called)
     except OSError as error:
-        raise MeshError(f"cannot be read: {error.strerror}", file=name) from None
-    _check_head(head, size, suffix, name)
-    scene = _read(path, suffix, name)
-    vertices, faces = _arrays(scene, name)
-    if units is None and suffix == ".3mf":
-        scale = THREE_MF_UNITS.get(str(scene.units or "millimeter").lower(), 1.0)
-    else:
-        scale = UNITS[units or FORMAT_UNITS.get(suffix, default_units)]
-    stated = units or FORMAT_UNITS.get(suffix, default_units)
-    vertices, triangles, dropped = _cleaned(vertices * scale, faces, name)
-    _check_size(vertices, scale, stated, name)
-    return LoadedMesh(vertices, triangles, dropped)
-
-
-def _check_head(head: bytes, size: int, suffix: str, name: str) -> None:
-    """Refuse what shows at the beginning of the file."""
-    if size == 0:
-        raise MeshError("is empty (0 bytes); export it again", file=name)
-    if size > MOST_BYTES:
-        raise MeshError(f"has {size / 1e9:.1f} GB; simplify it below {MOST_TRIANGLES:,} triangles", file=name)
-    start = head.lstrip(b"\xef\xbb\xbf \t\r\n").lower()
-    if start.startswith((b"<!doctype", b"<html")):
-        raise MeshError("is a web page, not a mesh; download the file itself", file=name)
-    if suffix == ".stl":
-        _check_stl(head, size, name)
-
-
-def _check_stl(head: bytes, size: int, name: str) -> None:
-    """A binary STL has an 80-byte header, a count, and 50 bytes a triangle; an ASCII one begins with "solid"."""
-    if len(head) >= 84:
-        (count,) = struct.unpack_from("<I", head, 80)
-        if size == 84 + 50 * count:
-            _check_count(count, name)
-            return
-    if head.lstrip().lower().startswith(b"solid") and b"\0" not in head:
-        return
-    if len(head) < 84:
-        raise MeshError(f"is cut short: {size} bytes hold no STL; export it again", file=name)
-    holds = (size - 84) // 50
-    if count == 0 or count > 50 * MOST_TRIANGLES:
-        raise MeshError("is not an STL file; export it again", file=name)
-    raise MeshError(
-        f"is cut short or damaged: it announces {count:,} triangles and holds {holds:,}; export it again",
-        file=name,
-        count=count,
-    )
-
-
-def _check_count(count: int, name: str) -> None:
-    if count == 0:
-        raise MeshError("has no triangles; export it again", file=name, count=0)
-    if count > MOST_TRIANGLES:
-        raise MeshError(
-            f"has {count:,} triangles; at most {MOST_TRIANGLES:,} can be used: export it coarser or simplify it",
-            file=name,
-            count=count,
-        )
-
-
-def _read(path: Path, suffix: str, name: str) -> Any:
-    """Let trimesh read the file; whatever goes wrong in there is said in one line."""
-    import warnings
-
-    import trimesh
-
-    try:
-        with path.open("rb") as file, warnings.catch_warnings():
-            warnings.simplefilter("ignore")
-            return trimesh.load_scene(file, file_type=suffix[1:], process=False)
+        raise MeshError(f"cannot be read: {error.strerror or error}", file=called) from None
     except MemoryError:
-        raise MeshError("is too large for this machine's memory; simplify it", file=name) from None
-    except Exception as error:
-        reason = " ".join(str(error).split())[:160] or type(error).__name__
-        raise MeshError(f"cannot be read as {suffix[1:].upper()} ({reason}); export it again", file=name) from None
+        raise MeshError("is too large for this machine's memory; export it coarser", file=called) from None
+    if not pieces:
+        raise MeshError("has no triangles; export it as a surface mesh", file=called, count=0)
+    offsets = np.cumsum([0, *(len(vertices) for vertices, _ in pieces)])
+    vertices = np.concatenate([vertices for vertices, _ in pieces])
+    faces = np.concatenate([faces + offset for (_, faces), offset in zip(pieces, offsets, strict=False)])
+    if len(faces) > MOST_TRIANGLES:
+        raise too_many(len(faces), called)
+    if faces.min() < 0 or faces.max() >= len(vertices):
+        raise MeshError("has triangles with corners that are not in the file; export it again", file=called)
+    bad = int((~np.isfinite(vertices).all(axis=1)[faces].all(axis=1)).sum())
+    if bad:
+        raise MeshError(
+            f"has {bad:,} of {len(faces):,} triangles with coordinates that are not finite; export it again",
+            file=called,
+            count=bad,
+        )
+    vertices, faces = _merged(vertices, faces)
+    sound = _has_area(vertices, faces)
+    dropped = int((~sound).sum())
+    if dropped == len(faces):
+        raise MeshError(f"has only triangles without area ({dropped:,}); export it again", file=called, count=dropped)
+    if dropped:
+        vertices, faces = _merged(vertices, faces[sound])
+    return MeshData(vertices, faces.astype(np.int32), dropped, unit)
 
 
-def _arrays(scene: Any, name: str) -> tuple[Array, NDArray[np.int64]]:
-    """All triangles of a scene, placed; refuses a file without any."""
+def _read(path: Path, name: str) -> tuple[list[tuple[Array, NDArray[np.int64]]], float | None]:
+    """Every object of a file as vertices and faces, placed, and the unit that the file states, in mm."""
     import trimesh
 
+    # from memory: with a path, trimesh would follow references to other files
+    content = io.BytesIO(path.read_bytes())
+    suffix = path.suffix.lower()[1:]
     try:
-        pieces = [piece for piece in scene.dump() if isinstance(piece, trimesh.Trimesh) and len(piece.faces)]
+        with warnings.catch_warnings(), np.errstate(all="ignore"):
+            warnings.simplefilter("ignore")
+            loaded: Any = trimesh.load(content, file_type=suffix, process=False)
+            found = loaded.dump() if isinstance(loaded, trimesh.Scene) else [loaded]
+            pieces = [
+                (np.asarray(piece.vertices, dtype=float), np.asarray(piece.faces, dtype=np.int64))
+                for piece in found
+                if isinstance(piece, trimesh.Trimesh) and len(piece.faces)
+            ]
+    except (OSError, MemoryError):
+        raise
     except Exception as error:
-        raise MeshError(f"cannot be read: {' '.join(str(error).split())[:160]}", file=name) from None
-    if not pieces:
-        raise MeshError("has no triangles; export it as a surface mesh", file=name, count=0)
-    count = sum(len(piece.faces) for piece in pieces)
-    _check_count(count, name)
-    offsets = np.cumsum([0, *(len(piece.vertices) for piece in pieces)])
-    vertices = np.concatenate([np.asarray(piece.vertices, dtype=float) for piece in pieces])
-    faces = np.concatenate(
-        [np.asarray(piece.faces, dtype=np.int64) + offset for piece, offset in zip(pieces, offsets, strict=False)]
-    )
-    if faces.min() < 0 or faces.max() >= len(vertices):
-        raise MeshError("has triangles whose corners are not in the file; export it again", file=name)
-    return vertices, faces
+        # the parsers of five formats raise whatever comes; here it all means one thing
+        reason = printable(" ".join(str(error).split())) or type(error).__name__
+        raise MeshError(f"cannot be read as {suffix.upper()} ({reason}); export it again", file=name) from None
+    unit = None
+    if suffix == "3mf":
+        unit = THREE_MF_UNITS.get(str(getattr(loaded, "units", None) or "millimeter").rstrip("s").lower())
+    return pieces, unit
 
 
-def _cleaned(vertices: Array, faces: NDArray[np.int64], name: str) -> tuple[Array, NDArray[np.int32], int]:
-    """Merge equal vertices, drop triangles without area, refuse coordinates that are not finite."""
-    used = vertices[faces]
-    bad = ~np.isfinite(used).all(axis=(1, 2))
-    if bad.any():
-        raise MeshError(
-            f"has {int(bad.sum()):,} triangles with coordinates that are not finite; export it again",
-            file=name,
-            count=int(bad.sum()),
-        )
-    merged, index = np.unique(used.reshape(-1, 3), axis=0, return_inverse=True)
-    triangles = index.reshape(-1, 3)
-    a, b, c = (merged[triangles[:, k]] for k in range(3))
-    with np.errstate(over="ignore", invalid="ignore"):
-        double_area = np.linalg.norm(np.cross(b - a, c - a), axis=1)
-        longest = np.max(
-            [np.linalg.norm(b - a, axis=1), np.linalg.norm(c - b, axis=1), np.linalg.norm(a - c, axis=1)], axis=0
-        )
-        sound = double_area > SLIVER * longest * longest
-    sound &= longest > 0.0
-    dropped = int((~sound).sum())
-    if dropped == len(triangles):
-        raise MeshError(f"has only degenerate triangles ({dropped:,}); export it again", file=name, count=dropped)
-    kept, compact = np.unique(triangles[sound], return_inverse=True)
-    return merged[kept], compact.reshape(-1, 3).astype(np.int32), dropped
+def _merged(vertices: Array, faces: NDArray[np.int64]) -> tuple[Array, NDArray[np.int64]]:
+    """Merge equal vertices and leave out those that no face uses; the order of the faces stays."""
+    used, compact = np.unique(faces, return_inverse=True)
+    # rows compared as raw bytes sort several times faster; adding 0 makes −0 and 0 the same bytes
+    rows = np.ascontiguousarray(vertices[used] + 0.0)
+    _, first, index = np.unique(rows.view([("", rows.dtype, 3)]).ravel().view("V24"), return_index=True, return_inverse=True)
+    return rows[first], index.reshape(-1)[compact.reshape(faces.shape)]
 
 
-def _check_size(vertices: Array, scale: float, stated: str, name: str) -> None:
-    """Refuse a size that no part has, and suggest the unit that fits."""
-    with np.errstate(over="ignore"):
-        diagonal = float(np.linalg.norm(vertices.max(axis=0) - vertices.min(axis=0)))
-    if POSSIBLE_MM[0] <= diagonal <= POSSIBLE_MM[1]:
-        return
-    raw = diagonal / scale
-    fitting = [unit for unit, factor in UNITS.items() if BELIEVABLE_MM[0] <= raw * factor <= BELIEVABLE_MM[1]]
-    hint = (
-        f'it fits if it is in {fitting[0]}: write units = "{fitting[0]}"'
-        if fitting
-        else "check what it was exported in"
-    )
-    raise MeshError(f"is {diagonal:.3g} mm across when read in {stated}; {hint}", file=name)
+def _has_area(vertices: Array, faces: NDArray[np.int64]) -> NDArray[np.bool_]:
+    """(m,) True where a triangle has a height that can be told from nothing."""
+    a, b, c = (vertices[faces[:, corner]] for corner in range(3))
+    # scaled, so that neither tiny nor huge units under- or overflow
+    size = max(float(np.ptp(vertices, axis=0).max()), np.finfo(float).tiny)
+    ab, bc, ca = (b - a) / size, (c - b) / size, (a - c) / size
+    longest = np.max([np.linalg.norm(side, axis=1) for side in (ab, bc, ca)], axis=0)
+    double_area = np.linalg.norm(np.cross(ab, ca), axis=1)
+    return np.asarray((longest > 0.0) & (double_area > FLAT_SHARE * longest * longest))
