@@ -91,7 +91,7 @@ class Motion:
     def _shaped(self, value: Array) -> Array:
         """(..., B) pose-last → leading axes first."""
         moved = np.moveaxis(value, -1, 0)
-        return np.asarray(moved.reshape(*self.shape, *moved.shape[1:]))
+        return np.asarray(moved.reshape((*self.shape, *moved.shape[1:])))
 
     @cached_property
     def _frames(self) -> Mapping[str, Frame]:

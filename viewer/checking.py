@@ -15,8 +15,8 @@ from typing import Any, TypeAlias
 from knucklepath.viewer.source import Source, dotted, nearest, shown
 from knucklepath.viewer.toml_lines import KeyPath
 
-#: Greatest size of a length, mm: one kilometre.
-MOST_LENGTH_MM = 1e6
+#: Greatest size of a length in the file's own unit; whether a lesser one is believable is not judged here.
+MOST_LENGTH = 1e6
 #: Greatest size of any other number.
 MOST_NUMBER = 1e12
 
@@ -227,12 +227,12 @@ class _Check:
             number = math.inf if value > 0 else -math.inf
         if not math.isfinite(number):
             raise self.wrong(path, value, "a finite number", example)
-        if length:
-            number *= self.mm_per_unit
-        if abs(number) > (MOST_LENGTH_MM if length else MOST_NUMBER):
-            most = f"{number / 1e6:.3g} km" if length else f"more than {MOST_NUMBER:g}"
-            raise self.source.error(path, f"is {shown(value)}: {most}, far too large; write for example {example}")
-        return number
+        most = MOST_LENGTH if length else MOST_NUMBER
+        if abs(number) > most:
+            raise self.source.error(
+                path, f"is {shown(value)}, far too large (more than {most:,.0f}); write for example {example}"
+            )
+        return number * self.mm_per_unit if length else number
 
     def number(self, path: KeyPath, entry: Number, value: object) -> float:
         number = self.plain(path, value, entry.example, entry.length)
@@ -264,9 +264,10 @@ class _Check:
         if not isinstance(value, str):
             raise self.wrong(path, value, "text in quotes", entry.example)
         if entry.choices and value not in entry.choices:
-            near = nearest(value, list(entry.choices))
+            # two letters are like any other two
+            near = nearest(value, list(entry.choices)) if len(value) > 2 else None
             hint = f"did you mean '{near}'? " if near else ""
-            raise self.source.error(path, f"is {shown(value)}; {hint}It may be: {', '.join(entry.choices)}")
+            raise self.source.error(path, f"is {shown(value)}; {hint}it may be: {', '.join(entry.choices)}")
         if not value.strip():
             raise self.source.error(path, f"is empty; write for example {dotted(path[-1:])} = {entry.example}")
         return value

@@ -12,7 +12,7 @@ import zipfile
 from pathlib import Path, PureWindowsPath
 
 from knucklepath.kinematics.errors import MeshError
-from knucklepath.viewer.source import nearest, printable
+from knucklepath.viewer.source import nearest, one_line, printable
 
 #: Formats, by suffix.
 SUFFIXES = (".stl", ".obj", ".ply", ".glb", ".3mf")
@@ -33,22 +33,20 @@ def inside_folder(folder: Path, name: str) -> Path:
     ------
     MeshError : the path is absolute, has "..", leads out through a link, or there is no file.
     """
-    called = printable(name)
+    called = one_line(name)
     if "\0" in name:
         raise MeshError("no file can have that name", file=called)
     if "\\" in name:
-        raise MeshError(f"write the path with forward slashes: {printable(name.replace(chr(92), '/'))}", file=called)
+        raise MeshError(f"write the path with forward slashes: {one_line(name.replace(chr(92), '/'))}", file=called)
     if name.startswith(("/", "~")) or PureWindowsPath(name).drive:
-        raise MeshError("must be a path inside the project folder, not an absolute one; copy the file there", file=called)
+        raise MeshError("must be a path inside the project folder, not absolute; copy the file there", file=called)
     if ".." in name.split("/"):
         raise MeshError("leads out of the project folder ('..'); copy the file into it", file=called)
     path = folder / name
     try:
         real = path.resolve()
         if not real.is_relative_to(folder.resolve()):
-            raise MeshError(
-                "is a link that leads out of the project folder; copy the file itself into it", file=called
-            )
+            raise MeshError("is a link that leads out of the project folder; copy the file itself into it", file=called)
         if real.is_file():
             return path
         if real.exists():
@@ -57,9 +55,9 @@ def inside_folder(folder: Path, name: str) -> Path:
     except (OSError, RuntimeError) as error:
         raise MeshError(f"cannot be read: {getattr(error, 'strerror', None) or error}", file=called) from None
     if beside is None:
-        raise MeshError(f"there is no such file: the project has no folder '{printable(str(path.parent.name))}'", file=called)
+        raise MeshError(f"there is no such file, nor its folder '{printable(path.parent.name)}'", file=called)
     near = nearest(path.name, beside)
-    hint = f"did you mean '{printable((Path(name).parent / near).as_posix())}'?" if near else "check the path"
+    hint = f"did you mean '{one_line((Path(name).parent / near).as_posix())}'?" if near else "check the path"
     raise MeshError(f"there is no such file; {hint}", file=called)
 
 
@@ -131,7 +129,10 @@ def _check_stl(path: Path, head: bytes, size: int, name: str) -> None:
 
 
 def _check_ascii_stl(path: Path, name: str) -> None:
-    begun, ended = _occurrences(path, re.compile(rb"\bfacet\b", re.I)), _occurrences(path, re.compile(rb"\bendfacet\b", re.I))
+    begun, ended = (
+        _occurrences(path, re.compile(rb"\bfacet\b", re.I)),
+        _occurrences(path, re.compile(rb"\bendfacet\b", re.I)),
+    )
     if begun > MOST_TRIANGLES:
         raise too_many(begun, name)
     if begun == 0:
@@ -179,7 +180,9 @@ def _check_glb(path: Path, head: bytes, size: int, name: str) -> None:
         raise MeshError("is no GLB file (it does not begin with 'glTF'); export it again", file=name)
     _, length, json_length, kind = struct.unpack_from("<IIII", head, 4)
     if length != size or kind != GLB_JSON or json_length > size - 20:
-        raise MeshError(f"is cut short or damaged: it announces {length:,} bytes and has {size:,}; copy it again", file=name)
+        raise MeshError(
+            f"is cut short or damaged: it announces {length:,} bytes and has {size:,}; copy it again", file=name
+        )
     with path.open("rb") as file:
         file.seek(20)
         text = file.read(json_length)
@@ -220,7 +223,7 @@ def _check_3mf(path: Path, head: bytes, size: int, name: str) -> None:
                         if count > MOST_TRIANGLES:
                             raise too_many(count, name)
     except (zipfile.BadZipFile, OSError, NotImplementedError, RuntimeError, EOFError, ValueError) as error:
-        raise MeshError(f"is damaged: {printable(str(error))}; export or copy it again", file=name) from None
+        raise MeshError(f"is damaged: {printable(str(error), 120)}; export or copy it again", file=name) from None
     if count == 0:
         raise MeshError("has no triangles; export it as a surface mesh", file=name, count=0)
 

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from knucklepath.kinematics.errors import MeshError
 from knucklepath.viewer.mesh_files import MOST_TRIANGLES, check_mesh_file, inside_folder, too_many
-from knucklepath.viewer.source import printable
+from knucklepath.viewer.source import one_line, printable
 
 __all__ = ["MeshData", "inside_folder", "load_mesh"]
 
@@ -55,7 +55,7 @@ def load_mesh(path: Path, name: str | None = None) -> MeshData:
     ------
     MeshError : it cannot be read; it is cut short, empty, too large, or has coordinates that are not finite.
     """
-    called = printable(str(path) if name is None else name)
+    called = one_line(str(path) if name is None else name)
     try:
         check_mesh_file(path, called)
         pieces, unit = _read(path, called)
@@ -93,7 +93,7 @@ def _read(path: Path, name: str) -> tuple[list[tuple[Array, NDArray[np.int64]]],
     """Every object of a file as vertices and faces, placed, and the unit that the file states, in mm."""
     import trimesh
 
-    # from memory: with a path, trimesh would follow references to other files
+    # bytes, not a path: a parser then cannot follow references to other files
     content = io.BytesIO(path.read_bytes())
     suffix = path.suffix.lower()[1:]
     try:
@@ -110,7 +110,7 @@ def _read(path: Path, name: str) -> tuple[list[tuple[Array, NDArray[np.int64]]],
         raise
     except Exception as error:
         # the parsers of five formats raise whatever comes; here it all means one thing
-        reason = printable(" ".join(str(error).split())) or type(error).__name__
+        reason = printable(" ".join(str(error).split()), 120) or type(error).__name__
         raise MeshError(f"cannot be read as {suffix.upper()} ({reason}); export it again", file=name) from None
     unit = None
     if suffix == "3mf":
@@ -123,7 +123,9 @@ def _merged(vertices: Array, faces: NDArray[np.int64]) -> tuple[Array, NDArray[n
     used, compact = np.unique(faces, return_inverse=True)
     # rows compared as raw bytes sort several times faster; adding 0 makes −0 and 0 the same bytes
     rows = np.ascontiguousarray(vertices[used] + 0.0)
-    _, first, index = np.unique(rows.view([("", rows.dtype, 3)]).ravel().view("V24"), return_index=True, return_inverse=True)
+    _, first, index = np.unique(
+        rows.view([("", rows.dtype, 3)]).ravel().view("V24"), return_index=True, return_inverse=True
+    )
     return rows[first], index.reshape(-1)[compact.reshape(faces.shape)]
 
 
@@ -131,7 +133,8 @@ def _has_area(vertices: Array, faces: NDArray[np.int64]) -> NDArray[np.bool_]:
     """(m,) True where a triangle has a height that can be told from nothing."""
     a, b, c = (vertices[faces[:, corner]] for corner in range(3))
     # scaled, so that neither tiny nor huge units under- or overflow
-    size = max(float(np.ptp(vertices, axis=0).max()), np.finfo(float).tiny)
+    with np.errstate(over="ignore"):
+        size = max(float(np.ptp(vertices, axis=0).max()), np.finfo(float).tiny)
     ab, bc, ca = (b - a) / size, (c - b) / size, (a - c) / size
     longest = np.max([np.linalg.norm(side, axis=1) for side in (ab, bc, ca)], axis=0)
     double_area = np.linalg.norm(np.cross(ab, ca), axis=1)

@@ -7,6 +7,8 @@ from knucklepath.viewer.checking import Colour, Entry, Flag, Number, Table, Tabl
 
 #: What a length of 1 is in mm.
 MM_PER_UNIT = {"mm": 1.0, "m": 1000.0, "in": 25.4}
+#: Units as people read them.
+UNIT_NAMES = {"mm": "mm", "m": "metres", "in": "inches"}
 #: Generated solids besides those of rods and bodies.
 WHEEL_SOLIDS = ("tyre", "rim")
 
@@ -19,10 +21,10 @@ WHEEL = Table(
         "centre": Vector("[0.0, 640.0, 205.0]", required=True),
         "camber_deg": Number("-1.5", least=-45.0, most=45.0),
         "toe_deg": Number("0.2", least=-45.0, most=45.0),
-        "loaded_radius": Number("255.0", required=True, length=True, over=0.0, most=5000.0),
-        "tyre_radius": Number("260.0", length=True, over=0.0, most=5000.0),
-        "tyre_width": Number("180.0", length=True, over=0.0, most=5000.0),
-        "rim_diameter": Number("330.0", length=True, over=0.0, most=5000.0),
+        "loaded_radius": Number("255.0", required=True, length=True, over=0.0),
+        "tyre_radius": Number("260.0", length=True, over=0.0),
+        "tyre_width": Number("180.0", length=True, over=0.0),
+        "rim_diameter": Number("330.0", length=True, over=0.0),
     },
     required=True,
     about="the wheel that the knuckle carries",
@@ -30,8 +32,8 @@ WHEEL = Table(
 
 TRAVEL = Table(
     {
-        "bump": Number("60.0", required=True, length=True, over=0.0, most=5000.0),
-        "rebound": Number("50.0", required=True, length=True, over=0.0, most=5000.0),
+        "bump": Number("60.0", required=True, length=True, over=0.0),
+        "rebound": Number("50.0", required=True, length=True, over=0.0),
     },
     required=True,
     about="the limits of the wheel centre's travel",
@@ -39,7 +41,7 @@ TRAVEL = Table(
 
 RACK = Table(
     {
-        "each_way": Number("35.0", required=True, length=True, over=0.0, most=5000.0),
+        "each_way": Number("35.0", required=True, length=True, over=0.0),
         "axis": Vector("[0.0, 1.0, 0.0]", length=False),
     }
 )
@@ -117,6 +119,9 @@ TOP_KEYS = (
     "loads",
 )
 
+#: Arrays of tables: several entries of one kind.
+SEVERAL = ("parts", "clearances", "loads")
+
 #: Keys that are read and checked, whose results come with a later command.
 NOT_USED_YET = (
     ("spring", "shortest"),
@@ -170,7 +175,7 @@ def generated_names(layout: Layout) -> tuple[str, ...]:
 
 def rods_schema(layout: Layout) -> Table:
     """Diameters of everything that the program draws from the layout's data."""
-    diameter = Number("16.0", length=True, over=0.0, most=1000.0)
+    diameter = Number("16.0", length=True, over=0.0)
     entries: dict[str, Entry] = {"diameter": diameter}
     for name in generated_names(layout):
         keys: dict[str, Entry] = {"shown": Flag()}

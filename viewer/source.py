@@ -19,6 +19,7 @@ SHOWN_LENGTH = 60
 
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 _AT = re.compile(r"\s*\(at (?:line (\d+), column \d+|end of document)\)\s*$")
+_LONG_NUMBER = re.compile(r"\d{640,}")
 #: How the standard library's reader speaks of keys and tables given twice.
 _TWICE = ("overwrite", "twice", "mutate", "redefine", "duplicate")
 
@@ -27,9 +28,11 @@ _TWICE = ("overwrite", "twice", "mutate", "redefine", "duplicate")
 class Source:
     """A project file's values, with the line of each.
 
-    file : the path as the user gave it; folder : where it lies, resolved; data : as TOML gives it.
+    path : the file; file : the path as the user gave it, for messages; folder : where it lies, resolved; data : as
+    TOML gives it.
     """
 
+    path: Path
     file: str
     folder: Path
     data: dict[str, Any]
@@ -52,10 +55,15 @@ def dotted(path: KeyPath) -> str:
     return text
 
 
-def printable(text: str) -> str:
+def one_line(text: str) -> str:
+    """A text on one line, whatever is in it."""
+    return "".join(letter if letter.isprintable() else ascii(letter)[1:-1] for letter in text)
+
+
+def printable(text: str, length: int = SHOWN_LENGTH) -> str:
     """A text on one line, whatever is in it, and not too long."""
-    safe = "".join(letter if letter.isprintable() else ascii(letter)[1:-1] for letter in text)
-    return safe if len(safe) <= SHOWN_LENGTH else safe[: SHOWN_LENGTH - 1] + "…"
+    safe = one_line(text)
+    return safe if len(safe) <= length else safe[: length - 1] + "…"
 
 
 def shown(value: object) -> str:
@@ -77,29 +85,34 @@ def nearest(word: str, known: list[str]) -> str | None:
     return next((name for name in known if near and name.lower() == near[0]), None)
 
 
-def read_source(path: str | Path) -> Source:
+def read_source(path: str | Path, several: tuple[str, ...] = ()) -> Source:
     """Read a project file, or the one in a folder.
+
+    Parameters
+    ----------
+    several : tables that are written with double brackets, for messages.
 
     Raises
     ------
     ProjectError : there is no such file or more than one; it is not text; it is not TOML.
     """
     file = _find(Path(path))
-    name = str(file)
+    name = one_line(str(file))
     text = _text(file, name)
     lines = find_lines(text)
     try:
         data = tomllib.loads(text)
     except RecursionError:
-        raise ProjectError("brackets are nested too deeply for a project file", file=name) from None
+        deepest = max(range(text.count("\n") + 1), key=lambda row: text.split("\n")[row].count("["))
+        raise ProjectError("brackets are nested too deeply for a project file", file=name, line=deepest + 1) from None
     except ValueError as error:
-        raise _not_toml(str(error), text, lines, name) from None
-    return Source(name, file.parent.resolve(), data, lines)
+        raise _not_toml(str(error), text, lines, name, several) from None
+    return Source(file, name, file.parent.resolve(), data, lines)
 
 
 def _find(path: Path) -> Path:
     """The TOML file that a path means."""
-    name = printable(str(path))
+    name = one_line(str(path))
     try:
         if path.is_dir():
             found = sorted(item for item in path.glob("*.toml") if item.is_file() and not item.name.startswith("."))
@@ -122,7 +135,7 @@ def _find(path: Path) -> Path:
     except (OSError, ValueError) as error:
         raise ProjectError(f"cannot be read: {_reason(error)}", file=name) from None
     near = nearest(path.name, beside)
-    hint = f"did you mean '{printable(str(path.parent / near))}'?" if near else "check the path"
+    hint = f"did you mean '{one_line(str(path.parent / near))}'?" if near else "check the path"
     raise ProjectError(f"there is no such file or folder; {hint}", file=name)
 
 
@@ -154,30 +167,38 @@ def _text(file: Path, name: str) -> str:
     return text.replace("\r\n", "\n")
 
 
-def _not_toml(reason: str, text: str, lines: Lines, name: str) -> ProjectError:
+def _not_toml(reason: str, text: str, lines: Lines, name: str, several: tuple[str, ...]) -> ProjectError:
     """Build the error for text that is not TOML: a key given twice, or where the reader stumbled."""
     found = _AT.search(reason)
-    what = printable(_AT.sub("", reason)) if found else printable(reason)
     line = int(found[1]) if found and found[1] else None
     if any(word in reason for word in _TWICE) and lines.repeated:
         # the reader stops at the first; the scanner goes on
         twice = lines.repeated[0]
-        again = "write [[double brackets]] at each of several" if _is_table(text, twice.second) else "keep one of them"
+        last = str(twice.path[-1])
+        remedy = f"write [[{last}]], double brackets, each time" if last in several else "keep one of them"
         return ProjectError(
-            f"is given twice, first on line {twice.first}; {again}",
+            f"is given twice, first on line {twice.first}; {remedy}",
             file=name,
             key=dotted(twice.path),
             line=twice.second,
         )
-    if found and line is None:
-        line = text.rstrip("\n").count("\n") + 1
+    if line is None:
+        # the reader gives no line at the end of the text, nor for a number that is too long
+        long = _LONG_NUMBER.search(text)
+        line = text.count("\n", 0, long.start() if long and not found else len(text.rstrip("\n"))) + 1
+    what = printable(_AT.sub("", reason))
     return ProjectError(
-        f'is not TOML: {what[:1].lower() + what[1:]}; write key = value, text in "quotes", '
-        "points as [x, y, z] with a decimal point, tables as [name]",
-        file=name,
-        line=line,
+        f"is not TOML: {what[:1].lower() + what[1:]}; {_remedy(text.split(chr(10))[line - 1])}", file=name, line=line
     )
 
 
-def _is_table(text: str, line: int) -> bool:
-    return text.split("\n")[line - 1].lstrip().startswith("[")
+def _remedy(line: str) -> str:
+    """What is likely meant by a line that is not TOML."""
+    value = line.partition("=")[2].partition("#")[0].strip()
+    if re.fullmatch(r"[+-]?\d+,\d+", value):
+        return f"numbers have a decimal point: {value.replace(',', '.')}"
+    if value.count('"') % 2 or value.count("'") % 2:
+        return "a quotation mark is missing"
+    if re.fullmatch(r"[^\W\d][\w\s./-]*", value) and value not in ("true", "false", "nan", "inf"):
+        return f'text stands in quotes: "{printable(value)}"'
+    return 'write key = value, text in "quotes", points as [x, y, z], tables as [name]'

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 @hookimpl
 def knucklepath_overlays() -> list[Overlay]:
     """All that comes with the program, from the ground up."""
-    from knucklepath.plugins.overlays import ground, instant_axis, instant_centres, steering, wheel_path
+    from knucklepath.plugins.overlays import ground, instant_axis, instant_centres, labels, steering, wheel_path
 
     return [
         *ground.OVERLAYS,
@@ -21,4 +21,5 @@ def knucklepath_overlays() -> list[Overlay]:
         *instant_axis.OVERLAYS,
         *instant_centres.OVERLAYS,
         *steering.OVERLAYS,
+        *labels.OVERLAYS,
     ]

@@ -4,35 +4,42 @@ from __future__ import annotations
 
 import numpy as np
 
-from knucklepath.kinematics.corner import contact_point, spin_axis
-from knucklepath.plugins.overlays.glyphs import Disc, Glyph, Grid, Label, Overlay, Point, State
+from knucklepath.kinematics.corner import contact_point
+from knucklepath.plugins.overlays.glyphs import LOOKS, Disc, Glyph, Grid, Label, Overlay, Point, Ring, State
 
 #: Lines of the ground are this far apart, mm.
-GRID_MM = 100.0
+SPACING_MM = 100.0
+#: The ground has faded away at this many sizes of the mechanism.
+REACH_SHARE = 2.2
 UP = np.array([0.0, 0.0, 1.0])
 
 
 def ground(state: State) -> list[Glyph]:
-    """The ground at the design position: the plane through the contact point, as a grid."""
-    contact = state.pose.corner.wheel.contact
-    centre = np.round(contact / GRID_MM) * GRID_MM
-    centre[2] = contact[2]
-    return [Grid(centre, np.ceil(1.3 * state.size_mm / GRID_MM) * GRID_MM, GRID_MM, "ground")]
+    """The ground: a 100 mm grid in the level plane through the contact point, which the wheel stands on."""
+    contact = contact_point(state.pose)
+    if not np.isfinite(contact).all():
+        return []
+    design = state.pose.corner.wheel.contact
+    # the grid keeps its lines while the contact point wanders; only its height follows
+    centre = np.array([design[0], design[1], contact[2]])
+    return [Grid(centre, SPACING_MM, REACH_SHARE * state.size_mm, "ground")]
 
 
 def contact_patch(state: State) -> list[Glyph]:
-    """Where the tyre stands, at the present pose."""
+    """Where the tyre stands."""
     contact = contact_point(state.pose)
-    if not np.isfinite(contact).all() or not np.isfinite(spin_axis(state.pose)).all():
+    if not np.isfinite(contact).all():
         return []
+    radius = 0.028 * state.size_mm
     return [
-        Disc(contact, UP, 0.035 * state.size_mm, "contact"),
-        Point(contact, "contact"),
-        Label(contact, "contact point", "contact", priority=8),
+        Disc(contact, UP, 0.45 * radius, "contact-patch"),
+        Ring(contact, UP, radius, "contact-patch", 1.5),
+        Point(contact, "contact-patch", 6.0),
+        Label(contact, "contact point", "contact-patch", priority=7),
     ]
 
 
 OVERLAYS = (
-    Overlay("ground", "Ground", ground),
-    Overlay("contact-patch", "Contact patch", contact_patch),
+    Overlay("ground", "Ground, 100 mm grid", ground),
+    Overlay("contact-patch", "Contact point of the tyre", contact_patch, standard=LOOKS),
 )

@@ -2,44 +2,60 @@
 
 from __future__ import annotations
 
-from typing import TypeAlias
-
 import numpy as np
-from numpy.typing import NDArray
 
-from knucklepath.plugins.overlays.glyphs import FAR_SHARE, Axis, Glyph, Label, Overlay, Point, State, metres
+from knucklepath.plugins.overlays.glyphs import (
+    ENDLESS_MM,
+    FAR_MM,
+    Array,
+    Axis,
+    Glyph,
+    Label,
+    Overlay,
+    Point,
+    State,
+    length_text,
+    minus,
+)
 
-Array: TypeAlias = NDArray[np.float64]
+#: The axis is drawn this many sizes of the mechanism to each side of where it passes nearest the wheel.
+HALF_SHARE = 3.2
+#: A pitch smaller than this, mm/rad, is a plain hinge: no hand to show.
+NO_PITCH = 0.05
 
 
 def instant_axis(state: State) -> list[Glyph]:
-    """The axis through its point nearest the wheel centre, with its pitch; nothing for a pure translation.
+    """The axis through its point nearest the wheel centre, with the pitch; nothing for a pure translation.
 
-    An axis that passes far from the wheel is drawn where it comes nearest to the scene.
+    An axis that passes the wheel farther than ``FAR_MM`` is out of every picture: its label then says how far away it
+    is, at the wheel centre.
     """
     screw = state.pose.screw()
-    if not np.isfinite(screw.direction).all():
+    direction, point, wheel = screw.direction, screw.point, state.wheel_centre
+    if not (np.isfinite(direction).all() and np.isfinite(point).all()):
         return []
-    direction, point = screw.direction, screw.point
-    centre = state.pose.point("wheel", state.pose.corner.wheel.centre)
     pitch = float(screw.pitch_mm_per_rad)
-    text = f"instant axis, pitch {pitch:.0f} mm/rad".replace("-", "−")
-    distance = float(np.linalg.norm(point - centre))
-    if distance > FAR_SHARE * state.size_mm:
-        text += f", {metres(distance)} away"
-    middle = _nearest_to_scene(point, direction, state)
-    half = 1.1 * state.size_mm
+    sounds = "" if abs(pitch) < NO_PITCH else minus(f"{pitch:.0f}\N{THIN SPACE}mm/rad")
+    text = f"instant axis, pitch {sounds}" if sounds else "instant axis, no pitch"
+    away = float(np.linalg.norm(point - wheel))
+    if away > FAR_MM:
+        if away > ENDLESS_MM:
+            return []
+        return [Label(wheel, f"{text}, {length_text(away)} away", "instant-axis", priority=1)]
+    half = HALF_SHARE * state.size_mm
+    hand = pitch if sounds else float("nan")
     return [
-        Axis(middle, direction, "instant-axis", half, pitch),
-        Point(point, "instant-axis"),
-        Label(middle, text, "instant-axis", priority=1),
+        Axis(point, direction, "instant-axis", half, hand),
+        Point(point, "instant-axis", 7.0),
+        Label(point, text, "instant-axis", priority=1, along=_outward(point, direction, half)),
     ]
 
 
-def _nearest_to_scene(point: Array, direction: Array, state: State) -> Array:
-    """The axis' point nearest to the middle of the mechanism."""
-    middle = np.mean(list(state.pose.corner.mechanism.points.values()), axis=0)
-    return point + direction * float((middle - point) @ direction)
+def _outward(point: Array, direction: Array, half: float, count: int = 60) -> Array:
+    """(2·count, 3) places along the axis, the nearest to its point first."""
+    steps = np.linspace(0.0, half, count + 1)[1:]
+    signed = np.stack((steps, -steps), axis=-1).reshape(-1)
+    return np.asarray(point + signed[:, None] * direction)
 
 
-OVERLAYS = (Overlay("instant-axis", "Instant axis", instant_axis),)
+OVERLAYS = (Overlay("instant-axis", "Instant axis, with the pitch's hand", instant_axis, standard=("corner", "top")),)

@@ -1,19 +1,19 @@
 """Front- and side-view instant centres, swing arms, force lines and the roll centre. Data only.
 
-A centre that is far away is drawn as an arrow towards it with its distance; one that does not exist is not drawn.
+A centre that is far away is drawn as an arrow towards it that says how far it is; one that does not exist is not drawn.
 """
 
 from __future__ import annotations
 
-from typing import TypeAlias
+from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-from knucklepath.kinematics.corner import contact_point, corner_readings, front_instant_centre, side_instant_centre
-from knucklepath.kinematics.motion import Motion
+from knucklepath.kinematics.corner import contact_point, front_instant_centre, side_instant_centre
 from knucklepath.plugins.overlays.glyphs import (
-    FAR_SHARE,
+    ENDLESS_MM,
+    FAR_MM,
+    Array,
     Arrow,
     Glyph,
     Label,
@@ -22,145 +22,189 @@ from knucklepath.plugins.overlays.glyphs import (
     Point,
     Ring,
     State,
-    metres,
+    length_text,
+    minus,
+    stretch,
 )
 
-Array: TypeAlias = NDArray[np.float64]
-FORWARD, LEFT = np.array([1.0, 0.0, 0.0]), np.array([0.0, 1.0, 0.0])
+#: An arrow towards a far centre is this many sizes of the mechanism long.
+ARROW_SHARE = 0.8
+#: A force line of a centre on the wheel's own side of the car runs on to the middle plane, unless it is this far, mm.
+ROLL_CENTRE_REACH_MM = 1200.0
 
 
-def _wheel_centre(state: State) -> Array:
-    return state.pose.point("wheel", state.pose.corner.wheel.centre)
+@dataclass(frozen=True)
+class View:
+    """One of the two views: its name, its normal (0: x, 1: y), the axis across it, and what + and − along it mean."""
+
+    name: str
+    normal: int
+    across: int
+    plus: str
+    minus: str
+
+    @property
+    def facing(self) -> Array:
+        """(3,) the direction along which one looks."""
+        return np.eye(3)[self.normal]
 
 
-def _front(motion: Motion) -> Array:
-    """The front-view centre, infinite ones replaced by a point 10¹² mm out along their direction."""
-    return _finite(front_instant_centre(motion), motion, 1)
+FRONT = View("front", 0, 1, "outboard", "inboard")
+SIDE = View("side", 1, 0, "ahead", "behind")
 
 
-def _side(motion: Motion) -> Array:
-    return _finite(side_instant_centre(motion), motion, 0)
+@dataclass(frozen=True)
+class Centre:
+    """An instant centre seen from a point in the plane of its view.
+
+    start : (3,) that point; towards : (3,) unit vector to the centre; distance : mm, inf where it is endless.
+    """
+
+    view: View
+    start: Array
+    towards: Array
+    distance: float
+
+    @property
+    def far(self) -> bool:
+        """True when it is drawn as a direction only."""
+        return self.distance > FAR_MM
+
+    def end(self, state: State) -> Array:
+        """(3,) the centre, or the tip of the arrow towards it."""
+        return self.start + self.towards * (ARROW_SHARE * state.size_mm if self.far else self.distance)
+
+    @property
+    def where(self) -> str:
+        """How far it is, and on which side: "1825 mm inboard"."""
+        if not self.distance < ENDLESS_MM:
+            return "at infinity"
+        offset = self.distance * self.towards[self.view.across]
+        return f"{length_text(abs(offset))} {self.view.plus if offset > 0.0 else self.view.minus}"
 
 
-def _finite(centre: Array, motion: Motion, axis: int) -> Array:
-    if np.isinf(centre[axis]):
-        wheel = motion.point("wheel", motion.corner.wheel.centre)
-        velocity = motion.velocity("wheel", motion.corner.wheel.centre)
-        # a centre at infinity lies across the velocity of the wheel centre
-        out = np.zeros(3)
-        out[axis], out[2] = velocity[2], -velocity[axis]
-        return wheel + np.copysign(1e12, centre[axis] * out[axis]) * out
-    return centre
-
-
-def _reach(start: Array, centre: Array, state: State) -> tuple[Array, bool, float]:
-    """End of a line from ``start`` to a centre, whether the centre itself is reached, and its distance."""
-    along = centre - start
+def _centre(state: State, view: View, start: Array) -> Centre | None:
+    """The centre of a view as seen from ``start`` (3,); None where there is none."""
+    at = front_instant_centre(state.pose) if view is FRONT else side_instant_centre(state.pose)
+    along = at - start
+    along[view.normal] = 0.0
+    if np.isnan(along).any() or not np.isfinite(start).all():
+        return None
     distance = float(np.linalg.norm(along))
-    longest = FAR_SHARE * state.size_mm
-    if distance <= longest:
-        return centre, True, distance
-    return start + along / distance * 0.55 * longest, False, distance
+    if np.isfinite(distance) and distance < ENDLESS_MM:
+        return Centre(view, start, along / distance, distance) if distance > 0.0 else None
+    # endless: the line stands across the velocity of the knuckle's point at the start
+    body = state.pose
+    design = np.linalg.solve(body.rotation("wheel"), start - body.translation("wheel"))
+    velocity = body.velocity("wheel", design)
+    towards = np.zeros(3)
+    towards[view.across], towards[2] = velocity[2], -velocity[view.across]
+    length = float(np.linalg.norm(towards))
+    if length == 0.0:
+        return None
+    towards *= np.copysign(1.0, along[view.across] * towards[view.across]) / length
+    return Centre(view, start, towards, float("inf"))
 
 
-def _centre(state: State, centre: Array, normal: Array, view: str) -> list[Glyph]:
-    if not np.isfinite(centre).all():
+def _centre_mark(state: State, view: View) -> list[Glyph]:
+    wheel = state.wheel_centre
+    centre = _centre(state, view, wheel)
+    if centre is None:
         return []
-    end, reached, _ = _reach(_wheel_centre(state), centre, state)
-    if not reached:
-        return []
-    radius = 0.022 * state.size_mm
+    end = centre.end(state)
+    text = f"{view.name}-view instant centre, {centre.where}"
+    contact = contact_point(state.pose)
+    from_ = wheel if centre.far else contact
+    label = Label(end, text, "force-line", priority=2, along=stretch(from_, end), facing=view.facing)
+    if centre.far:
+        return [Arrow(wheel, end - wheel, "force-line", text, 1.5, view.facing), label]
     return [
-        Ring(end, normal, radius, "force-line"),
-        Point(end, "force-line", 6.0),
-        Label(end, f"{view}-view instant centre", "force-line", priority=2),
+        Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.5, view.facing),
+        Point(end, "force-line", 6.0, view.facing),
+        label,
     ]
 
 
 def front_centre(state: State) -> list[Glyph]:
-    """A ring at the front-view instant centre."""
-    return _centre(state, _front(state.pose), FORWARD, "front")
+    """A ring at the front-view instant centre, or an arrow towards it."""
+    return _centre_mark(state, FRONT)
 
 
 def side_centre(state: State) -> list[Glyph]:
-    """A ring at the side-view instant centre."""
-    return _centre(state, _side(state.pose), LEFT, "side")
+    """A ring at the side-view instant centre, or an arrow towards it."""
+    return _centre_mark(state, SIDE)
 
 
 def swing_arms(state: State) -> list[Glyph]:
     """Lines from the wheel centre to both instant centres, with the swing arms' lengths."""
-    start = _wheel_centre(state)
-    readings = corner_readings(state.pose)
+    wheel = state.wheel_centre
+    lengths = state.readings("fvsa_length", "svsa_length")
     glyphs: list[Glyph] = []
-    for centre, length, view in (
-        (_front(state.pose), readings["fvsa_length_mm"], "front"),
-        (_side(state.pose), readings["svsa_length_mm"], "side"),
-    ):
-        if not np.isfinite(centre).all() or not np.isfinite(start).all():
+    for view, length in zip((FRONT, SIDE), lengths.values(), strict=True):
+        centre = _centre(state, view, wheel)
+        if centre is None:
             continue
-        end, reached, _ = _reach(start, centre, state)
-        glyphs += _line_or_arrow(start, end, reached, "swing-arm", dashed=True)
-        text = metres(float(abs(length))) if np.isfinite(length) else "∞"
-        glyphs.append(Label(start + 0.6 * (end - start), f"{view}-view swing arm {text}", "swing-arm", priority=7))
+        end = centre.end(state)
+        text = f"{view.name}-view swing arm, {length_text(abs(length))}"
+        points = np.stack((wheel, end))
+        if centre.far:
+            glyphs.append(Arrow(wheel, end - wheel, "swing-arm", text, 1.5, view.facing))
+        else:
+            glyphs.append(Line(points, "swing-arm", True, 1.5, view.facing))
+        middle = wheel + 0.5 * (end - wheel)
+        glyphs.append(Label(middle, text, "swing-arm", priority=4, along=stretch(wheel, middle), facing=view.facing))
     return glyphs
-
-
-def _line_or_arrow(start: Array, end: Array, reached: bool, role: str, dashed: bool = False) -> list[Glyph]:
-    if reached:
-        return [Line(np.stack((start, end)), role, 1.8, dashed)]
-    return [
-        Line(np.stack((start, end)), role, 1.8, dashed),
-        Arrow(start + 0.9 * (end - start), 0.1 * (end - start), role),
-    ]
 
 
 def force_lines(state: State) -> list[Glyph]:
     """From the contact point to the instant centres: a contact force along them asks nothing of the spring."""
     contact = contact_point(state.pose)
-    if not np.isfinite(contact).all():
-        return []
     glyphs: list[Glyph] = []
-    for centre, normal, axis, view in (
-        (_front(state.pose), FORWARD, 0, "front"),
-        (_side(state.pose), LEFT, 1, "side"),
-    ):
-        if not np.isfinite(centre).all():
+    for view in (FRONT, SIDE):
+        centre = _centre(state, view, contact)
+        if centre is None:
             continue
-        # drawn in the view's own plane through the contact point
-        flat = centre.copy()
-        flat[axis] = contact[axis]
-        end, reached, distance = _reach(contact, flat, state)
-        glyphs += _line_or_arrow(contact, end, reached, "force-line")
-        text = f"{view}-view force line"
-        if reached:
-            glyphs.append(Ring(end, normal, 0.022 * state.size_mm, "force-line"))
+        end = centre.end(state)
+        text = f"{view.name}-view force line"
+        if centre.far:
+            text += f", centre {centre.where}"
+            glyphs.append(Arrow(contact, end - contact, "force-line", text, 2.0, view.facing))
         else:
-            text += f", centre {metres(distance) if distance < 1e9 else 'infinitely far'} away"
-        glyphs.append(Label(end, text, "force-line", priority=2))
+            glyphs.append(Line(np.stack((contact, end)), "force-line", False, 2.0, view.facing))
+            glyphs.append(Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.5, view.facing))
+        middle = contact + 0.5 * (end - contact)
+        glyphs.append(Label(middle, text, "force-line", priority=4, along=stretch(contact, middle), facing=view.facing))
     return glyphs
 
 
 def roll_centre(state: State) -> list[Glyph]:
     """Where the front-view force line meets the car's middle plane: the roll centre of a mirror-symmetric axle."""
-    height = float(corner_readings(state.pose)["roll_centre_height_mm"])
+    height = state.readings("roll_centre_height")["roll_centre_height"]
     contact = contact_point(state.pose)
-    if not np.isfinite(height) or abs(height) > FAR_SHARE * state.size_mm:
+    if not (np.isfinite(height) and np.isfinite(contact).all()) or abs(height) > ROLL_CENTRE_REACH_MM:
         return []
-    at = np.array([contact[0], 0.0, contact[2] + height])
     foot = np.array([contact[0], 0.0, contact[2]])
-    text = f"roll centre, {height:.0f} mm above ground".replace("-", "−")
+    at = foot + np.array([0.0, 0.0, height])
+    tall = np.array([0.0, 0.0, max(0.35 * state.size_mm, 1.4 * height)])
+    deep = np.array([0.0, 0.0, min(-0.06 * state.size_mm, 1.2 * height)])
+    side = "below" if height < 0.0 else "above"
+    text = f"roll centre, {minus(f'{abs(height):.0f}')}\N{THIN SPACE}mm {side} ground"
+    size = 0.02 * state.size_mm
+    view = FRONT.facing
+    cross = [np.array([0.0, size, size]), np.array([0.0, size, -size])]
     return [
-        Line(np.stack((foot, at)), "roll-centre", 1.5, dashed=True),
-        Ring(at, FORWARD, 0.03 * state.size_mm, "roll-centre", 3.0),
-        Point(at, "roll-centre", 8.0),
-        Label(at, text, "roll-centre", priority=2),
+        Line(np.stack((foot + deep, foot + tall)), "muted", True, 1.5, view),
+        Line(np.stack((contact, at)), "force-line", True, 1.5, view),
+        Ring(at, view, size, "roll-centre", 2.5, view),
+        *(Line(np.stack((at - arm, at + arm)), "roll-centre", False, 2.0, view) for arm in cross),
+        Label(at, text, "roll-centre", priority=2, along=stretch(contact, at), facing=view),
     ]
 
 
 OVERLAYS = (
-    Overlay("force-lines", "Force lines", force_lines),
-    Overlay("front-centre", "Front-view instant centre", front_centre, standard=False),
-    Overlay("side-centre", "Side-view instant centre", side_centre, standard=False),
-    Overlay("swing-arms", "Swing arms", swing_arms, standard=False),
-    Overlay("roll-centre", "Roll centre", roll_centre),
+    Overlay("front-centre", "Front-view instant centre", front_centre, standard=("front",)),
+    Overlay("side-centre", "Side-view instant centre", side_centre, standard=("side",)),
+    Overlay("swing-arms", "Front- and side-view swing arms", swing_arms, standard=()),
+    Overlay("force-lines", "Front- and side-view force lines", force_lines, standard=("corner", "front", "side")),
+    Overlay("roll-centre", "Roll centre of a mirror-symmetric axle", roll_centre, standard=("front",)),
 )
