@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from knucklepath.kinematics.closure import Closure, Corrected
+from knucklepath.kinematics.closure import ACCEPTED_RESIDUAL, SOUGHT_RESIDUAL, Closure, Corrected
 from knucklepath.kinematics.errors import MechanismError
 from knucklepath.kinematics.frames import rotation_from_vector, rotation_vector
 from knucklepath.kinematics.mechanism import Mechanism
@@ -32,6 +32,10 @@ COARSE_FROM = 120
 COARSE_NODES = 7
 #: Steps of path following, at most; a path needs about five, one that ends at a lock-up about sixty.
 MOST_PATH_STEPS = 400
+#: A step along a free curve is trusted when it is corrected by no more than this share of its length …
+CURVE_SHARE = 0.15
+#: … and turns the tangent by no more than 11° (this is the cosine).
+CURVE_COSINE = 0.98
 
 
 @dataclass(frozen=True)
@@ -282,8 +286,8 @@ def trace_curve(
     ----------
     mechanism : one degree of freedom, no inputs (or inputs held at 0).
     start : a solved state with one pose.
-    step : arclength step, mm (angles weighted with what they move).
-    most_points : stop after that many steps if the curve has not closed.
+    step : greatest arclength step, mm (angles weighted with what they move).
+    most_points : stop after that many points if the curve has not closed.
 
     Returns
     -------
@@ -291,54 +295,78 @@ def trace_curve(
     arclength : (count,).
     closed : True when the curve came back to its start.
 
+    Raises
+    ------
+    MechanismError : the equations leave no curve, ``start`` does not close every joint, or the curve meets a
+        singular point.
+
     References
     ----------
     E. L. Allgower and K. Georg, *Numerical Continuation Methods*, 1990 (citation from memory).
     """
     closure = Closure(mechanism)
-    if closure.equations != closure.tree.unknowns - 1:
+    unknowns = closure.tree.unknowns
+    if closure.equations != unknowns - 1:
         raise MechanismError("a free curve needs exactly one unknown more than equations")
-    scale = closure.tree.scale[: closure.tree.unknowns]
+    scale = closure.tree.scale[:unknowns]
 
-    def tangent_of(state: State) -> Array:
-        jacobian = closure.evaluate(state, {}).jacobian[:, : closure.tree.unknowns, 0] / scale
-        return np.asarray(np.linalg.svd(jacobian)[2][-1])
+    def scaled(state: State) -> tuple[Array, Array]:
+        evaluation = closure.evaluate(state, {})
+        return evaluation.residual[:, 0], evaluation.jacobian[:, :unknowns, 0] / scale
 
+    def tangent_of(jacobian: Array) -> Array:
+        # Along one branch the bordered determinant keeps its sign, so the sign gives the tangent its sense. A step
+        # across to a neighbouring branch that runs almost through this one then shows as a reversed tangent.
+        along = np.linalg.svd(jacobian)[2][-1]
+        return np.asarray(along * np.sign(np.linalg.det(np.vstack((jacobian, along)))))
+
+    residual, jacobian = scaled(start)
+    if not np.abs(residual).max(initial=0.0) <= ACCEPTED_RESIDUAL:
+        raise MechanismError("a curve starts at a solved pose; at the one given, the joints are open")
     points, lengths = [start], [0.0]
-    tangent = tangent_of(start)
+    tangent = tangent_of(jacobian)
     first, closed, size = tangent, False, step
     while len(points) < most_points:
-        here = points[-1]
-        trial = closure.tree.advance(here, (tangent * size / scale)[:, None])
+        trial, moved = closure.tree.advance(points[-1], (tangent * size / scale)[:, None]), 0.0
+        residual, jacobian = scaled(trial)
         for _ in range(8):
-            evaluation = closure.evaluate(trial, {})
-            if evaluation.error[0] < 1e-12:
+            if np.abs(residual).max(initial=0.0) <= SOUGHT_RESIDUAL:
                 break
-            jacobian = evaluation.jacobian[:, : closure.tree.unknowns, 0] / scale
-            bordered = np.vstack((jacobian, tangent))
-            change = np.linalg.solve(bordered, np.append(-evaluation.residual[:, 0], 0.0))
+            change = np.linalg.solve(np.vstack((jacobian, tangent)), np.append(-residual, 0.0))
+            moved += float(np.linalg.norm(change))
             trial = closure.tree.advance(trial, (change / scale)[:, None])
-        new = tangent_of(trial)
-        new = new if new @ tangent > 0.0 else -new
-        if evaluation.error[0] > 1e-11 or new @ tangent < 0.97:
+            residual, jacobian = scaled(trial)
+        new = tangent_of(jacobian)
+        # A long correction or a sharp turn may have led to another branch: only a shorter step can tell.
+        strayed = moved > CURVE_SHARE * size or new @ tangent < CURVE_COSINE
+        if strayed or not np.abs(residual).max(initial=0.0) <= ACCEPTED_RESIDUAL:
             size *= 0.5
             if size < step * 1e-6:
                 raise MechanismError("the curve cannot be followed further: it meets a singular point")
             continue
         points.append(trial)
         lengths.append(lengths[-1] + size)
-        back = state_distance(trial, start)
-        if len(points) > 3 and back < 1.01 * size and new @ first > 0.5:
+        if len(points) > 3 and _state_distance(closure, trial, start) < 1.01 * size and new @ first > 0.5:
             closed = True
             break
         tangent, size = new, min(size * 1.5, step)
     return stack_states(points), np.array(lengths), closed
 
 
-def state_distance(a: State, b: State) -> float:
-    """A plain distance between two single-pose states: places, turns and scalars together."""
-    parts = (a.turns - b.turns, a.places - b.places, a.scalars - b.scalars)
-    return float(np.sqrt(sum(float(np.sum(part * part)) for part in parts)))
+def _state_distance(closure: Closure, a: State, b: State) -> float:
+    """Distance of two single-pose states, mm: angles weighted with what they move, whole turns left out."""
+    total = 0.0
+    for link in closure.tree.links.values():
+        if link.kind == "free":
+            angle = np.linalg.norm(a.turns[link.slot] - b.turns[link.slot]) / np.sqrt(2.0)
+            total += float(angle * closure.tree.scale[link.column]) ** 2
+            total += float(np.sum((a.places[link.slot] - b.places[link.slot]) ** 2))
+        else:
+            apart = float(a.scalars[link.slot, 0] - b.scalars[link.slot, 0])
+            if link.kind == "hinge":
+                apart = 2.0 * np.sin(0.5 * apart) * float(closure.tree.scale[link.column])
+            total += apart**2
+    return float(np.sqrt(total))
 
 
 def stack_states(states: list[State]) -> State:

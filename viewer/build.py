@@ -22,7 +22,6 @@ from knucklepath.kinematics.motion import lock_reason, solve_motion
 from knucklepath.kinematics.wheel import Corner, Spring, Vehicle, Wheel
 from knucklepath.viewer.parts import body_of
 from knucklepath.viewer.plausible import check_corner_size, check_lengths, check_wheel_size
-from knucklepath.viewer.schema import WHEEL_SOLIDS
 from knucklepath.viewer.source import Source, dotted, one_line, printable
 
 Array = NDArray[np.float64]
@@ -190,20 +189,13 @@ def build_rules(
         path = ("clearances", position, "between")
         if a == b and a != "*":
             raise source.error(path, f"names '{printable(a)}' twice; name two things that must stay apart")
-        rule = ClearanceRule(_standing_for(a, solids), _standing_for(b, solids), entry["gap"])
+        rule = ClearanceRule(a, b, entry["gap"])
         try:
             pairs_to_check(corner, solids, (rule,))
         except PairError as error:
             raise source.error(path, one_line(str(error))) from error
         rules.append(rule)
     return tuple(rules)
-
-
-def _standing_for(name: str, solids: Sequence[Solid]) -> str:
-    """The part that is the tyre, or the rim, where it has another name; every other name as it is."""
-    if name not in WHEEL_SOLIDS or any(solid.name == name for solid in solids):
-        return name
-    return next((solid.name for solid in solids if solid.role == name), name)
 
 
 def build_loads(source: Source, given: Sequence[Mapping[str, Any]]) -> tuple[LoadCase, ...]:

@@ -177,18 +177,22 @@ def _axis(made: Shapes, axis: Axis, size_mm: float) -> None:
 
 def screw_thread(point: Array, along: Array, hand: float, size_mm: float) -> Array:
     """(n, 3, 3) triangles of a few turns of wire about an axis: right-handed for ``hand`` > 0."""
-    frame = axis_frame(along)
+    return np.asarray(point + size_mm * (_unit_thread(hand) @ axis_frame(along).T))
+
+
+@cache
+def _unit_thread(hand: float) -> Array:
+    """The thread about z at the origin, for a mechanism of size 1."""
     turn = np.linspace(-np.pi * SCREW_TURNS, np.pi * SCREW_TURNS, int(28 * SCREW_TURNS) + 1)
-    radius, wire = SCREW_RADIUS * size_mm, SCREW_WIRE * size_mm
-    rise = SCREW_LENGTH * size_mm / (2.0 * np.pi * SCREW_TURNS)
-    cosine, sine = np.cos(turn)[:, None], hand * np.sin(turn)[:, None]
-    out = cosine * frame[:, 0] + sine * frame[:, 1]
-    core = point + radius * out + (rise * turn)[:, None] * along
-    tangent = radius * (hand * cosine * frame[:, 1] - hand * sine * frame[:, 0]) + rise * along
+    rise = SCREW_LENGTH / (2.0 * np.pi * SCREW_TURNS)
+    zero = np.zeros_like(turn)
+    out = np.stack((np.cos(turn), hand * np.sin(turn), zero), axis=-1)
+    core = SCREW_RADIUS * out + np.stack((zero, zero, rise * turn), axis=-1)
+    tangent = np.stack((-SCREW_RADIUS * np.sin(turn), hand * SCREW_RADIUS * np.cos(turn), rise + zero), axis=-1)
     tangent /= np.linalg.norm(tangent, axis=1, keepdims=True)
     side = np.cross(tangent, out)
     section = np.linspace(0.0, 2.0 * np.pi, 9)[None, :, None]
-    tube = core[:, None] + wire * (np.cos(section) * out[:, None] + np.sin(section) * side[:, None])
+    tube = core[:, None] + SCREW_WIRE * (np.cos(section) * out[:, None] + np.sin(section) * side[:, None])
     a, b, c, d = tube[:-1, :-1], tube[:-1, 1:], tube[1:, 1:], tube[1:, :-1]
     return np.concatenate((np.stack((a, b, c), axis=2), np.stack((a, c, d), axis=2))).reshape(-1, 3, 3)
 

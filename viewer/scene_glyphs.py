@@ -50,12 +50,16 @@ class _Batch:
                 mapper.SetRelativeCoincidentTopologyPointOffsetParameter(FORWARD)
             renderer.AddActor(actor)
             self.actors.append(actor)
+        self._filled: tuple[Array, NDArray[np.int64]] = (np.empty((0, 3)), np.empty(0, dtype=np.int64))
         self._cells = vtkCellArray()
         self._points = vtkPoints()
         self.data.SetPoints(self._points)
 
     def fill(self, points: Array, lengths: NDArray[np.int64], kind: str) -> None:
-        """Take points (n, 3) in runs of ``lengths``: each run one line, triangle or dot."""
+        """Take points (n, 3) in runs of ``lengths``: each run one line, triangle or dot. Does nothing if none moved."""
+        if np.array_equal(points, self._filled[0]) and np.array_equal(lengths, self._filled[1]):
+            return
+        self._filled = (points, lengths)
         set_points(self._points, points)
         set_cells(self._cells, lengths, np.arange(len(points)))
         {"line": self.data.SetLines, "triangle": self.data.SetPolys, "dot": self.data.SetVerts}[kind](self._cells)

@@ -32,6 +32,7 @@ class Outline:
         normals = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
         self._normals, self._middles = normals, corners.mean(axis=1)
         self._edges, self._beside = shared_edges(faces)
+        self._seen: NDArray[np.bool_] = np.zeros(len(self._edges), dtype=bool)
         self._data = vtkPolyData()
         points = vtkPoints()
         set_points(points, vertices)
@@ -52,7 +53,11 @@ class Outline:
 
     def show(self, matrix: Array, camera: Camera) -> None:
         """Find the outline for a pose (4, 4) and a camera."""
-        chosen = self._edges[self.seen(matrix, camera)]
+        seen = self.seen(matrix, camera)
+        if np.array_equal(seen, self._seen):
+            return
+        self._seen = seen
+        chosen = self._edges[seen]
         set_cells(self._cells, np.full(len(chosen), 2), chosen.reshape(-1).astype(np.int64))
         self._data.Modified()
 

@@ -45,7 +45,8 @@ class Pair:
 def pairs_to_check(corner: Corner, solids: Sequence[Solid], rules: Sequence[Rule]) -> tuple[Pair, ...]:
     """Resolve rules into pairs of solids.
 
-    A name is a solid's, or a body's (then it means every solid on that body). "*" means every solid that is not
+    A name is a solid's, or a body's (then it means every solid on that body), or "tyre" or "rim" (the part that
+    is it). "*" means every solid that is not
     joined to the other one. A pair that is named is always checked; where two rules speak of one pair the greater
     gap counts, a rule with both names going before one with "*". Without rules every two solids that are not joined
     are checked against touching. Solids that do not move against each other because both stand on the chassis are
@@ -83,7 +84,7 @@ def _meant(corner: Corner, solids: Sequence[Solid], name: str) -> list[Solid]:
     own = [solid for solid in solids if solid.name == name]
     if own:
         return own
-    on_body = [solid for solid in solids if solid.body == name]
+    on_body = [solid for solid in solids if solid.body == name or solid.role == name]
     if on_body:
         return on_body
     if name in corner.body_names:

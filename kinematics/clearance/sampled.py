@@ -28,6 +28,8 @@ Verdict: TypeAlias = Literal["clear", "tight", "touching", "undecided"]
 FINEST_SHARE = 1e-5
 #: Steps of sharpening, at most.
 MOST_STEPS = 60
+#: Gains below this, mm, are rounding.
+UNMOVED = 1e-9
 #: Triangles with less than this area, mm², have no direction and only confuse a distance engine.
 LEAST_AREA = 1e-12
 
@@ -178,7 +180,9 @@ def _search(motion: Motion, pair: Pair, bodies: dict[str, _Body], tolerance_mm: 
     flat = motion[np.unravel_index(reached, motion.shape)] if motion.shape else motion
     rotations, translations = _relative(flat, pair.a.body, pair.b.body)
     travel, rack = flat.travel_mm.reshape(-1), flat.rack_mm.reshape(-1)
-    best, at, points = _over_grid(search, rotations, translations)
+    # the pose nearest to design comes first: it is the one to report where nothing moves against anything
+    start = int(np.argmin(travel**2 + rack**2))
+    best, at, points = _over_grid(search, rotations, translations, start)
     # surfaces that never meet keep their sides, so one inside test at one pose settles the whole grid
     within = search.inside(rotations[at], translations[at]) if best > 0.0 else None
     pose = (float(travel[at]), float(rack[at]))
@@ -212,7 +216,9 @@ def _search(motion: Motion, pair: Pair, bodies: dict[str, _Body], tolerance_mm: 
     )
 
 
-def _over_grid(search: _Search, rotations: Array, translations: Array) -> tuple[float, int, tuple[Array, Array]]:
+def _over_grid(
+    search: _Search, rotations: Array, translations: Array, start: int
+) -> tuple[float, int, tuple[Array, Array]]:
     """Smallest distance over all given poses, which pose, and the nearest points in the frame of body a.
 
     A point of the moving body goes no farther between two poses than the farthest corner of its box does (the
@@ -221,7 +227,7 @@ def _over_grid(search: _Search, rotations: Array, translations: Array) -> tuple[
     places = np.einsum("nij,kj->nki", rotations, search.moving.corners) + translations[:, None]
     bound = np.full(len(rotations), -np.inf)
     best, at, points = np.inf, 0, (np.zeros(3), np.zeros(3))
-    index = len(rotations) // 2
+    index = start
     while True:
         value, on_a, on_b = search.distance(rotations[index], translations[index])
         if value < best:
@@ -230,7 +236,7 @@ def _over_grid(search: _Search, rotations: Array, translations: Array) -> tuple[
         np.maximum(bound, value - moved, out=bound)
         bound[index] = np.inf
         index = int(bound.argmin())
-        if best <= 0.0 or bound[index] >= best:
+        if best <= 0.0 or bound[index] >= best - UNMOVED:
             return best, at, points
 
 
@@ -270,7 +276,7 @@ def _sharpen(
         reach = max((abs(value - best) for value, *_ in found), default=0.0)
         if found:
             value, on_a, on_b, k = min(found, key=lambda item: item[0])
-            if value < best:
+            if value < best - UNMOVED:
                 gained = best - value
                 best, points, place, at = value, (on_a, on_b), near[k], tries[k]
         if best <= 0.0:

@@ -161,8 +161,8 @@ def _bar(corner: Corner, body: SlidingBody, diameter: float) -> Mesh | None:
     meshes: list[Mesh] = []
     for end in held:
         across = float(end @ axis)
-        reach = min(abs(across), 220.0) if across else 120.0
-        meshes.append(cylinder(end, end - np.sign(across or 1.0) * reach * axis, 0.65 * diameter, 20))
+        reach = min(max(abs(across), 40.0), 220.0)
+        meshes.append(cylinder(end, end - np.copysign(reach, across) * axis, 0.65 * diameter, 20))
         meshes.append(ball(end, END_SHARE * diameter / 2.0))
     return merged(meshes)
 

@@ -13,6 +13,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any, TypeAlias
 
 import numpy as np
@@ -162,21 +163,25 @@ class State:
     size_mm: float
     case: Any = None
 
-    @property
+    @cached_property
     def ground_z(self) -> float:
         """Height of the ground at this pose, mm: the body stands still, the ground follows the contact point."""
         return float(contact_point(self.pose)[2])
 
-    @property
+    @cached_property
     def wheel_centre(self) -> Array:
         """(3,) the wheel centre at this pose, mm."""
         return self.pose.point("wheel", self.pose.corner.wheel.centre)
 
+    @cached_property
+    def _row(self) -> Motion:
+        """The pose as a row of one, so that every reading is an array; kept, because it keeps what readings share."""
+        return self.pose[None]
+
     def readings(self, *ids: str) -> dict[str, float]:
         """Built-in readings of the pose, by id; one that the corner does not have is nan."""
         wanted = [reading for reading in BUILTIN_READINGS if reading.id in ids]
-        # one pose as a row of one, so that every reading is an array
-        values = corner_readings(self.pose[None], wanted)
+        values = corner_readings(self._row, wanted)
         found = {reading.id: float(values[reading.column][0]) for reading in wanted if reading.column in values}
         return {name: found.get(name, float("nan")) for name in ids}
 

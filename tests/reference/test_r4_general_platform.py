@@ -10,14 +10,13 @@ from __future__ import annotations
 from functools import cache
 
 import numpy as np
-import pytest
 from numpy.typing import NDArray
 from scipy.optimize import least_squares
 from scipy.spatial.transform import Rotation
 
 from knucklepath.kinematics.audit import mobility
 from knucklepath.kinematics.closure import Closure
-from knucklepath.kinematics.following import stack_states, trace_curve
+from knucklepath.kinematics.following import trace_curve
 from knucklepath.kinematics.mechanism import FreeBody, Mechanism, Rod
 from knucklepath.kinematics.tree import State
 
@@ -45,9 +44,11 @@ BODY = np.array(
 )
 LENGTHS = np.array([1.0, 0.645275, 1.086284, 1.503439, 1.281933, 0.771071])
 POSES = 40
-STARTS = 6_000
+STARTS = 60_000
 #: Two solved poses differ by far more than this in some coordinate, two ends of one iteration by far less.
 DISTINCT = 1e-4
+#: Arclength step along a circuit: short enough that no two poses lie between neighbouring points.
+STEP = 0.02
 
 
 @cache
@@ -143,19 +144,32 @@ def test_six_legs_leave_no_freedom_and_five_leave_one() -> None:
     assert (five.by_count, five.by_rank) == (1, 1)
 
 
-def circuit(start: int, step: float) -> tuple[frozenset[int], float]:
-    """Follow the curve of five legs from one of the poses; which poses close the sixth leg on it, and its length."""
+def circuit(start: int) -> tuple[frozenset[int], float]:
+    """Follow the curve of five legs from one of the poses: which poses close the sixth leg on it, and its length."""
     poses, _ = multistart()
-    curve, arclength, closed = trace_curve(platform(5), poses.take(np.array([start])), step)
+    six, five = Closure(platform()), Closure(platform(5))
+    curve, arclength, closed = trace_curve(platform(5), carried(poses.take(np.array([start])), six, five), STEP)
     assert closed
-    closure = Closure(platform())
-    sixth = leg_lengths(*placed(closure, curve))[:, 5] - LENGTHS[5]
-    # the start itself is a zero, so its own sign is rounding: the crossing is between its two neighbours
-    sixth = sixth[1:]
-    crossings = np.flatnonzero(np.sign(sixth) != np.sign(np.roll(sixth, -1))) + 1
-    ended = closure.correct(curve.take(crossings), {})
+    sixth = leg_lengths(*placed(five, curve))[:, 5] - LENGTHS[5]
+    # the start itself is a zero, whose sign is rounding: its crossing is between the last point and the second
+    crossings = np.flatnonzero(np.sign(sixth[1:]) != np.sign(np.roll(sixth[1:], -1))) + 1
+    ended = six.correct(carried(curve.take(crossings), five, six), {})
     assert ended.converged.all()
-    rows = coordinates(*placed(closure, poses))
-    met = [int(np.abs(rows - row).max(axis=1).argmin()) for row in coordinates(*placed(closure, ended.state))]
-    assert len(met) == len(set(met)), "a crossing was met twice: the step is too long"
+    rows = coordinates(*placed(six, poses))
+    met = [int(np.abs(rows - row).max(axis=1).argmin()) for row in coordinates(*placed(six, ended.state))]
+    assert len(met) == len(set(met)), "one pose was met twice: the step is too long"
     return frozenset(met), float(arclength[-1])
+
+
+def carried(state: State, given: Closure, wanted: Closure) -> State:
+    """The same poses in the coordinates of another platform, whose body has another reference point."""
+    reference = wanted.tree.links["platform"].reference
+    return State(state.turns, given.tree.frames(state)["platform"].locate(reference)[None], state.scalars)
+
+
+def test_without_its_last_leg_the_platform_runs_on_two_circuits_of_34_and_6_poses() -> None:
+    first, _ = circuit(0)
+    rest = sorted(set(range(POSES)) - first)
+    second, _ = circuit(rest[0])
+    assert sorted((len(first), len(second))) == [6, 34]
+    assert first | second == set(range(POSES))

@@ -89,6 +89,8 @@ def open_project(path: str, allow_plugins: bool) -> Project:
     for part in project.parts:
         if part.dropped_triangles:
             note(f"part '{part.name}': {part.dropped_triangles} degenerate triangles dropped")
+    if project.unused_keys:
+        note(f"read and checked, but not used yet: {', '.join(project.unused_keys)}")
     return project
 
 

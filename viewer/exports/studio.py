@@ -106,8 +106,8 @@ class Studio:
             from knucklepath.viewer.scene import Scene
 
             drawn = [self._times * side for side in size]
-            self._plotter: Any = pyvista.Plotter(off_screen=True, window_size=drawn, lighting="none")
-            self._window: Any = self._plotter.render_window
+            plotter: Any = pyvista.Plotter(off_screen=True, window_size=drawn, lighting="none")
+            self._plotter, self._window = plotter, plotter.render_window
             self._window.SetMultiSamples(0)
             self.scene = Scene(
                 self._plotter,
