@@ -24,7 +24,7 @@ Array = NDArray[np.float64]
 TRUSTED_SHARE = 0.35
 #: … or by no more than this (mm), which covers steps of almost no length.
 TRUSTED_MM = 1e-3
-#: Path following gives up, and calls the pose the limit, when its step is below this (mm or rad of input).
+#: Path following gives up, and calls the pose the limit, when its step is below this (mm of input).
 SMALLEST_STEP = 2e-3
 #: Grids of more poses than this start from a polynomial through a coarse grid; smaller ones follow directly.
 COARSE_FROM = 120
@@ -240,7 +240,11 @@ def follow(
     the end is reached, less where the mechanism locks or would change its branch.
     """
     count = start.count
-    length = np.maximum.reduce([np.zeros(count), *(np.abs(end[name] - begin[name]) for name in end)])
+    # An input that turns a body is weighted with what it moves, so that every length here is in mm.
+    driven = dict(zip(closure.tree.driven, closure.tree.scale[closure.tree.unknowns :], strict=True))
+    length = np.maximum.reduce(
+        [np.zeros(count), *(driven.get(name, 1.0) * np.abs(end[name] - begin[name]) for name in end)]
+    )
     done = closure.correct(start, begin)
     state = done.state.copy()
     error, determinant = done.error.copy(), done.determinant.copy()
@@ -263,7 +267,9 @@ def follow(
             tangent += rates[:, k, active] * change[name]
         predicted = closure.tree.advance(state.take(active), tangent)
         tried = some.correct(predicted, target, 6)
-        trusted = tried.moved <= TRUSTED_SHARE * closure.size_of(tangent) + TRUSTED_MM
+        # The driven bodies' own motion counts: where the others turn back, their tangent alone is almost nothing.
+        stride = np.linalg.norm([closure.size_of(tangent), *(driven[name] * change[name] for name in driven)], axis=0)
+        trusted = tried.moved <= TRUSTED_SHARE * stride + TRUSTED_MM
         good = tried.converged & (np.sign(tried.determinant) == sign[active]) & trusted
         index = active[good]
         state.put(index, tried.state.take(good))

@@ -6,6 +6,7 @@ the same shapes.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 from functools import cache, lru_cache
@@ -14,7 +15,6 @@ from typing import TypeAlias
 import numpy as np
 from numpy.typing import NDArray
 
-from knucklepath.kinematics.clearance.primitives import axis_frame
 from knucklepath.plugins.overlays.glyphs import Arrow, Axis, Disc, Glyph, Grid, Label, Line, Point, Ring, Ticks
 
 Array: TypeAlias = NDArray[np.float64]
@@ -110,9 +110,21 @@ def _unit_circle() -> Array:
     return np.stack((np.cos(angle), np.sin(angle)), axis=-1)
 
 
+def frame_about(direction: Array) -> Array:
+    """(3, 3) rows: two unit vectors across a direction, and its own; right-handed. Plain floats: called every frame."""
+    x, y, z = (float(part) for part in direction)
+    length = math.sqrt(x * x + y * y + z * z)
+    x, y, z = x / length, y / length, z / length
+    # M. M. Frisvad's basis as made robust by T. Duff et al., J. Computer Graphics Techniques 6 (2017), from memory
+    sign = math.copysign(1.0, z)
+    a = -1.0 / (sign + z)
+    b = x * y * a
+    return np.array([[1.0 + sign * x * x * a, sign * b, -sign * x], [b, sign + y * y * a, -y], [x, y, z]])
+
+
 def circle(centre: Array, normal: Array, radius: float) -> Array:
     """(RING_SIDES + 1, 3) closed circle, counter-clockwise about the normal."""
-    return np.asarray(centre + radius * (_unit_circle() @ axis_frame(normal)[:, :2].T))
+    return np.asarray(centre + radius * (_unit_circle() @ frame_about(normal)[:2]))
 
 
 def dashes(points: Array, pattern: tuple[float, ...]) -> list[Array]:
@@ -165,11 +177,10 @@ def _axis(made: Shapes, axis: Axis, size_mm: float) -> None:
     along = axis.direction / np.linalg.norm(axis.direction)
     reach = axis.half_length_mm * along
     screw = np.isfinite(axis.pitch_mm_per_rad) and axis.pitch_mm_per_rad != 0.0
-    for sign in (1.0, -1.0):
-        ends = np.stack((axis.point, axis.point + sign * reach))
-        pattern = tuple(share * size_mm for share in (LONG_DASH, SHORT_GAP, DOT, SHORT_GAP))
-        for piece in dashes(ends, pattern) if axis.dash_dot else (ends,):
-            made.line(axis.role, axis.width_px, piece)
+    pattern = tuple(share * size_mm for share in (LONG_DASH, SHORT_GAP, DOT, SHORT_GAP))
+    half = np.stack((np.zeros(3), reach))
+    for piece in dashes(half, pattern) if axis.dash_dot else (half[None],):
+        made.line(axis.role, axis.width_px, np.concatenate((axis.point + piece, axis.point - piece)))
     if screw:
         hand = float(np.sign(axis.pitch_mm_per_rad))
         made.solids.setdefault(axis.role, []).append(screw_thread(axis.point, along, hand, size_mm))
@@ -177,7 +188,7 @@ def _axis(made: Shapes, axis: Axis, size_mm: float) -> None:
 
 def screw_thread(point: Array, along: Array, hand: float, size_mm: float) -> Array:
     """(n, 3, 3) triangles of a few turns of wire about an axis: right-handed for ``hand`` > 0."""
-    return np.asarray(point + size_mm * (_unit_thread(hand) @ axis_frame(along).T))
+    return np.asarray(point + size_mm * (_unit_thread(hand) @ frame_about(along)))
 
 
 @cache

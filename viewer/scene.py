@@ -157,15 +157,15 @@ class Scene:
         """
         if not bool(pose.reached):
             return
+        matrices = {body: pose.matrix(body) for body in self._bodies}
         for body, actors in self._bodies.items():
-            matrix = pose.matrix(body)
             for actor in actors:
-                set_matrix(actor, matrix)
+                set_matrix(actor, matrices[body])
         if self._spring is not None:
             self._spring.show(pose)
         if self.camera is not None and self._overlays:
             for body, outline in self._outlines.values():
-                outline.show(pose.matrix(body), self.camera)
+                outline.show(matrices[body], self.camera)
         self._draw(State(self.path, pose, self.size_mm, case))
         self.renderer.ResetCameraClippingRange()
 

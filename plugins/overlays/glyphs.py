@@ -80,7 +80,7 @@ class Ring:
     normal: Array
     radius_mm: float
     role: str
-    width_px: float = 2.5
+    width_px: float = 2.0
     facing: Array | None = None
 
 

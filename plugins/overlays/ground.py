@@ -34,7 +34,7 @@ def contact_patch(state: State) -> list[Glyph]:
     return [
         Disc(contact, UP, 0.45 * radius, "contact-patch"),
         Ring(contact, UP, radius, "contact-patch", 1.5),
-        Point(contact, "contact-patch", 6.0),
+        Point(contact, "contact-patch", 7.0),
         Label(contact, "contact point", "contact-patch", priority=7),
     ]
 

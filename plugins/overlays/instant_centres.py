@@ -119,8 +119,8 @@ def _centre_mark(state: State, view: View) -> list[Glyph]:
     if centre.far:
         return [Arrow(wheel, end - wheel, "force-line", text, 1.5, view.facing), label]
     return [
-        Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.5, view.facing),
-        Point(end, "force-line", 6.0, view.facing),
+        Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.0, view.facing),
+        Point(end, "force-line", 7.0, view.facing),
         label,
     ]
 
@@ -171,7 +171,7 @@ def force_lines(state: State) -> list[Glyph]:
             glyphs.append(Arrow(contact, end - contact, "force-line", text, 2.0, view.facing))
         else:
             glyphs.append(Line(np.stack((contact, end)), "force-line", False, 2.0, view.facing))
-            glyphs.append(Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.5, view.facing))
+            glyphs.append(Ring(end, view.facing, 0.024 * state.size_mm, "force-line", 2.0, view.facing))
         middle = contact + 0.5 * (end - contact)
         glyphs.append(Label(middle, text, "force-line", priority=4, along=stretch(contact, middle), facing=view.facing))
     return glyphs
@@ -195,7 +195,7 @@ def roll_centre(state: State) -> list[Glyph]:
     return [
         Line(np.stack((foot + deep, foot + tall)), "muted", True, 1.5, view),
         Line(np.stack((contact, at)), "force-line", True, 1.5, view),
-        Ring(at, view, size, "roll-centre", 2.5, view),
+        Ring(at, view, size, "roll-centre", 2.0, view),
         *(Line(np.stack((at - arm, at + arm)), "roll-centre", False, 2.0, view) for arm in cross),
         Label(at, text, "roll-centre", priority=2, along=stretch(contact, at), facing=view),
     ]

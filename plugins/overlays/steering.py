@@ -33,7 +33,7 @@ def draw_steering_axis(state: State) -> list[Glyph]:
     return [
         Line(np.stack((foot, top)), "steering-axis", width_px=2.0),
         Ring(foot, UP, size, "steering-axis", 2.0),
-        Point(foot, "steering-axis", 6.0),
+        Point(foot, "steering-axis", 7.0),
         Line(np.stack((foot, contact)), "steering-axis", dashed=True, width_px=1.5),
         Label(top, text, "steering-axis", priority=3, along=np.linspace(top, foot, 40)),
     ]

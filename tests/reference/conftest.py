@@ -66,9 +66,7 @@ def planar_double_a_arm() -> tuple[Corner, dict[str, float]]:
     across = np.sqrt(radius_o**2 - along**2)
     unit = between / apart
     b = upper_pivot + along * unit + across * np.array([-unit[1], unit[0]])
-    knuckle = float(
-        np.arctan2(*(b - a)[::-1]) - np.arctan2(*(knuckle_b - knuckle_a)[::-1])
-    )
+    knuckle = float(np.arctan2(*(b - a)[::-1]) - np.arctan2(*(knuckle_b - knuckle_a)[::-1]))
     upper = float(np.arctan2(*(b - upper_pivot)[::-1]))
     centre = a - turned(knuckle, knuckle_a)
     points = {

@@ -53,7 +53,8 @@ def test_every_body_stands_in_its_published_pose(
     origin = {
         "lower_arm": points["lower_arm.ball_joint"] * (0.24 / 0.42)
         + points["lower_arm.front_pivot"] * np.array([0.0, 0.18 / 0.42, 0.18 / 0.42]),
-        "upper_arm": 0.5 * (points["upper_arm.front_pivot"] * np.array([0.0, 1.0, 1.0]) + points["upper_arm.ball_joint"]),
+        "upper_arm": 0.5
+        * (points["upper_arm.front_pivot"] * np.array([0.0, 1.0, 1.0]) + points["upper_arm.ball_joint"]),
         "knuckle": corner.wheel.centre,
     }[body]
     np.testing.assert_allclose(published_pose.point(body, origin) / 1000.0, [0.0, y, z], atol=PRINTED)
@@ -72,7 +73,10 @@ def test_the_knuckle_turns_about_the_computed_instant_centre(published_pose: Mot
 def test_the_knuckle_turns_per_rise_by_one_over_the_swing_arm(published_pose: Motion) -> None:
     rate = published_pose.twist("knuckle")[0] * 1000.0
     assert rate == pytest.approx(1.1407968, abs=1e-7)
-    centre, wheel = front_instant_centre(published_pose), published_pose.point("wheel", published_pose.corner.wheel.centre)
+    centre, wheel = (
+        front_instant_centre(published_pose),
+        published_pose.point("wheel", published_pose.corner.wheel.centre),
+    )
     assert rate == pytest.approx(1000.0 / (wheel[1] - centre[1]), rel=1e-12)
 
 

@@ -55,5 +55,8 @@ def test_the_knuckle_turns_about_the_computed_instant_centre(published_pose: Mot
 def test_the_knuckle_turns_per_rise_by_one_over_the_swing_arm(published_pose: Motion) -> None:
     rate = published_pose.twist("knuckle")[0] * 1000.0
     assert rate == pytest.approx(0.5032715, abs=1e-7)
-    centre, wheel = front_instant_centre(published_pose), published_pose.point("wheel", published_pose.corner.wheel.centre)
+    centre, wheel = (
+        front_instant_centre(published_pose),
+        published_pose.point("wheel", published_pose.corner.wheel.centre),
+    )
     assert rate == pytest.approx(1000.0 / (wheel[1] - centre[1]), rel=1e-12)

@@ -57,9 +57,7 @@ def design(spatial_double_a_arm: Corner) -> Motion:
         ("camber_deg", TABLE[:, 4], SEVEN),
     ],
 )
-def test_the_wheel_follows_the_computed_path(
-    path: Motion, column: str, figures: np.ndarray, half_digit: float
-) -> None:
+def test_the_wheel_follows_the_computed_path(path: Motion, column: str, figures: np.ndarray, half_digit: float) -> None:
     np.testing.assert_allclose(corner_readings(path)[column], figures, rtol=0.0, atol=half_digit)
 
 

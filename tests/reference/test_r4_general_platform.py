@@ -10,12 +10,14 @@ from __future__ import annotations
 from functools import cache
 
 import numpy as np
+import pytest
 from numpy.typing import NDArray
 from scipy.optimize import least_squares
 from scipy.spatial.transform import Rotation
 
 from knucklepath.kinematics.audit import mobility
 from knucklepath.kinematics.closure import Closure
+from knucklepath.kinematics.errors import MechanismError
 from knucklepath.kinematics.following import trace_curve
 from knucklepath.kinematics.mechanism import FreeBody, Mechanism, Rod
 from knucklepath.kinematics.tree import State
@@ -47,8 +49,8 @@ POSES = 40
 STARTS = 60_000
 #: Two solved poses differ by far more than this in some coordinate, two ends of one iteration by far less.
 DISTINCT = 1e-4
-#: Arclength step along a circuit: short enough that no two poses lie between neighbouring points.
-STEP = 0.02
+#: Arclength step along a circuit: a tenth of what separates the two nearest poses.
+STEP = 0.01
 
 
 @cache
@@ -121,13 +123,15 @@ def test_every_pose_keeps_the_published_lengths() -> None:
     closure = Closure(platform())
     rotation, place = placed(closure, multistart()[0])
     np.testing.assert_allclose(leg_lengths(rotation, place), np.broadcast_to(LENGTHS, (POSES, 6)), rtol=0.0, atol=1e-10)
-    np.testing.assert_allclose(rotation @ np.swapaxes(rotation, 1, 2), np.broadcast_to(np.eye(3), rotation.shape), atol=1e-12)
+    np.testing.assert_allclose(
+        rotation @ np.swapaxes(rotation, 1, 2), np.broadcast_to(np.eye(3), rotation.shape), atol=1e-12
+    )
 
 
 def test_the_forty_poses_are_distinct_by_far_more_than_their_residual() -> None:
     rows = coordinates(*placed(Closure(platform()), multistart()[0]))
     apart = np.abs(rows[:, None] - rows).max(axis=-1)[~np.eye(POSES, dtype=bool)]
-    assert apart.min() > 100 * DISTINCT
+    assert apart.min() > 10 * STEP
 
 
 def test_the_pose_computed_elsewhere_is_among_them() -> None:
@@ -173,3 +177,10 @@ def test_without_its_last_leg_the_platform_runs_on_two_circuits_of_34_and_6_pose
     second, _ = circuit(rest[0])
     assert sorted((len(first), len(second))) == [6, 34]
     assert first | second == set(range(POSES))
+
+
+def test_a_curve_is_not_traced_from_a_pose_with_open_joints() -> None:
+    poses, _ = multistart()
+    # the coordinates of the six-legged platform mean another pose of the five-legged one
+    with pytest.raises(MechanismError, match="solved pose"):
+        trace_curve(platform(5), poses.take(np.array([0])), STEP)
