@@ -8,21 +8,19 @@ of the whole grid.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
-from typing import Literal, TypeAlias
+from typing import TypeAlias
 
 import numpy as np
 from numpy.typing import NDArray
 
+from knucklepath.kinematics.clearance.gap import Gap, Verdict, relative_poses, sound_faces, worst_first
 from knucklepath.kinematics.clearance.inside import is_closed, wholly_inside
 from knucklepath.kinematics.clearance.pairs import Pair
 from knucklepath.kinematics.clearance.solids import Solid
-from knucklepath.kinematics.errors import MeshError
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.kinematics.wheel import Corner
 
 Array: TypeAlias = NDArray[np.float64]
-Verdict: TypeAlias = Literal["clear", "tight", "touching", "undecided"]
 
 #: Sharpening stops when its steps are below this share of the motion's width, whatever the tolerance.
 FINEST_SHARE = 1e-5
@@ -30,34 +28,6 @@ FINEST_SHARE = 1e-5
 MOST_STEPS = 60
 #: Gains below this, mm, are rounding.
 UNMOVED = 1e-9
-#: Triangles with less than this area, mm², have no direction and only confuse a distance engine.
-LEAST_AREA = 1e-12
-
-
-@dataclass(frozen=True)
-class Gap:
-    """The smallest gap found for a pair.
-
-    Attributes
-    ----------
-    between : the two names; required_mm : what was asked.
-    verdict : "touching", "tight", or "undecided" where the gap found is large enough but not proven.
-    gap_mm : smallest distance found, 0 when touching; proven_gap_mm : None, as nothing is proven here.
-    travel_mm, rack_mm : the pose; point_a_mm, point_b_mm (3,) : nearest points at that pose, body frame of the car.
-    evaluations : distances computed; note : what a reader must know besides, or "".
-    """
-
-    between: tuple[str, str]
-    required_mm: float
-    verdict: Verdict
-    gap_mm: float
-    proven_gap_mm: float | None
-    travel_mm: float
-    rack_mm: float
-    point_a_mm: Array
-    point_b_mm: Array
-    evaluations: int
-    note: str = ""
 
 
 class _Body:
@@ -68,7 +38,7 @@ class _Body:
 
         self.solid = solid
         vertices = np.ascontiguousarray(solid.vertices, dtype=float)
-        faces = _sound_faces(solid, vertices)
+        faces = sound_faces(solid, vertices)
         self.vertices, self.faces = vertices, faces
         self.closed = is_closed(vertices, faces)
         model = fcl.BVHModel()
@@ -81,27 +51,6 @@ class _Body:
         self.corners = np.array(
             [[x, y, z] for x in (low[0], high[0]) for y in (low[1], high[1]) for z in (low[2], high[2])]
         )
-
-
-def _sound_faces(solid: Solid, vertices: Array) -> NDArray[np.int32]:
-    """Drop triangles without area; refuse a solid without any, or with coordinates that are not finite."""
-    faces = np.ascontiguousarray(solid.faces, dtype=np.int32)
-    if not np.isfinite(vertices).all():
-        raise MeshError(f"part '{solid.name}' has coordinates that are not finite")
-    if len(faces):
-        a, b, c = (vertices[faces[:, k]] for k in range(3))
-        faces = faces[np.linalg.norm(np.cross(b - a, c - a), axis=1) > 2.0 * LEAST_AREA]
-    if not len(faces):
-        raise MeshError(f"part '{solid.name}' has no triangle with an area")
-    return np.ascontiguousarray(faces)
-
-
-def _relative(motion: Motion, a: str, b: str) -> tuple[Array, Array]:
-    """Pose of body b as seen from body a: rotations (n, 3, 3) and translations (n, 3), poses flattened."""
-    rotation_a, rotation_b = (motion.rotation(name).reshape(-1, 3, 3) for name in (a, b))
-    shift = (motion.translation(b) - motion.translation(a)).reshape(-1, 3)
-    back = np.swapaxes(rotation_a, -1, -2)
-    return back @ rotation_b, (back @ shift[..., None])[..., 0]
 
 
 class _Search:
@@ -171,14 +120,14 @@ def sampled_gaps(
         gaps.append(_search(motion, pair, bodies, tolerance_mm))
         if progress is not None:
             progress(done, len(pairs))
-    return sorted(gaps, key=lambda gap: (gap.verdict != "touching", gap.gap_mm - gap.required_mm))
+    return worst_first(gaps)
 
 
 def _search(motion: Motion, pair: Pair, bodies: dict[str, _Body], tolerance_mm: float) -> Gap:
     search = _Search(pair, bodies, motion.corner)
     reached = np.flatnonzero(motion.reached.reshape(-1))
     flat = motion[np.unravel_index(reached, motion.shape)] if motion.shape else motion
-    rotations, translations = _relative(flat, pair.a.body, pair.b.body)
+    rotations, translations = relative_poses(flat, pair.a.body, pair.b.body)
     travel, rack = flat.travel_mm.reshape(-1), flat.rack_mm.reshape(-1)
     # the pose nearest to design comes first: it is the one to report where nothing moves against anything
     start = int(np.argmin(travel**2 + rack**2))
@@ -270,7 +219,7 @@ def _sharpen(
         if not len(tries):
             break
         near = solve_motion(corner, tries[:, 0], tries[:, 1])
-        rotations, translations = _relative(near, pair.a.body, pair.b.body)
+        rotations, translations = relative_poses(near, pair.a.body, pair.b.body)
         found = [(*search.distance(rotations[k], translations[k]), k) for k in range(len(tries)) if near.reached[k]]
         gained = 0.0
         reach = max((abs(value - best) for value, *_ in found), default=0.0)

@@ -173,16 +173,11 @@ class State:
         """(3,) the wheel centre at this pose, mm."""
         return self.pose.point("wheel", self.pose.corner.wheel.centre)
 
-    @cached_property
-    def _row(self) -> Motion:
-        """The pose as a row of one, so that every reading is an array; kept, because it keeps what readings share."""
-        return self.pose[None]
-
     def readings(self, *ids: str) -> dict[str, float]:
         """Built-in readings of the pose, by id; one that the corner does not have is nan."""
         wanted = [reading for reading in BUILTIN_READINGS if reading.id in ids]
-        values = corner_readings(self._row, wanted)
-        found = {reading.id: float(values[reading.column][0]) for reading in wanted if reading.column in values}
+        values = corner_readings(self.pose, wanted)
+        found = {reading.id: float(values[reading.column]) for reading in wanted if reading.column in values}
         return {name: found.get(name, float("nan")) for name in ids}
 
 

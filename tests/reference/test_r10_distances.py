@@ -9,9 +9,10 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from knucklepath.kinematics.clearance.gap import Gap
 from knucklepath.kinematics.clearance.pairs import Pair
 from knucklepath.kinematics.clearance.primitives import Mesh, ball, cylinder, lathe
-from knucklepath.kinematics.clearance.sampled import Gap, sampled_gaps
+from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.clearance.solids import Solid
 from knucklepath.kinematics.motion import solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel

@@ -46,7 +46,7 @@ BODY = np.array(
 )
 LENGTHS = np.array([1.0, 0.645275, 1.086284, 1.503439, 1.281933, 0.771071])
 POSES = 40
-STARTS = 60_000
+STARTS = 100_000
 #: Two solved poses differ by far more than this in some coordinate, two ends of one iteration by far less.
 DISTINCT = 1e-4
 #: Arclength step along a circuit: a tenth of what separates the two nearest poses.

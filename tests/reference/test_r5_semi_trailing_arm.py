@@ -11,10 +11,14 @@ leans the wheel's top inboard and toes in as it rises, is common practice.
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
+from knucklepath.kinematics.audit import audit
 from knucklepath.kinematics.corner import corner_readings
+from knucklepath.kinematics.mechanism import Fixed, FreeBody, Hinge, PointInput
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel
 from knucklepath.plugins.layouts import semi_trailing_arm
@@ -22,18 +26,28 @@ from knucklepath.plugins.layouts import semi_trailing_arm
 CENTRE = np.array([-40.0, 720.0, 310.0])
 
 
-def arm_turned(sweep: float, turn: np.ndarray) -> Motion:
+def arm_turned(sweep: float, turn: np.ndarray, built: str = "hinged body") -> Motion:
     """A corner with an arm swept by ``sweep`` (rad), at the travel that turns the arm by ``turn`` (rad).
 
-    The wheel centre stands level with the axis, so it rises by its distance from the axis times sin φ.
+    The wheel centre stands level with the axis, so it rises by its distance from the axis times sin φ. ``built`` tells
+    how: the layout's "hinged body", a free body on a "hinge joint", or a free body "fixed" to the arm.
     """
     along = np.array([np.sin(sweep), np.cos(sweep), 0.0])
     pivot = np.array([350.0, 180.0, 310.0])
     points = {"arm.inner_pivot": pivot, "arm.outer_pivot": pivot + 370.0 * along, "wheel.centre": CENTRE}
     distance = np.linalg.norm(np.cross(along, CENTRE - pivot))
-    corner = Corner(
-        semi_trailing_arm.LAYOUT.mechanism(points), Wheel(CENTRE, loaded_radius=300.0), carrier="arm", axle="rear"
-    )
+    mechanism, carrier = semi_trailing_arm.LAYOUT.mechanism(points), "arm"
+    if built != "hinged body":
+        carrier = "hub"
+        joint = Hinge("pivots", "hub", "chassis", ("arm.inner_pivot", "arm.outer_pivot"))
+        mechanism = replace(
+            mechanism,
+            bodies=(FreeBody("hub"),) if built == "hinge joint" else (*mechanism.bodies, FreeBody("hub")),
+            joints=(joint,) if built == "hinge joint" else (Fixed("weld", "hub", "arm", "arm.outer_pivot"),),
+            inputs=(PointInput("travel", "hub", "wheel.centre"),),
+        )
+    audit(mechanism)
+    corner = Corner(mechanism, Wheel(CENTRE, loaded_radius=300.0), carrier=carrier, axle="rear")
     return solve_motion(corner, distance * np.sin(turn))
 
 
@@ -54,10 +68,11 @@ def test_the_wheel_leans_and_toes_as_the_closed_form_says(sweep: float, turn: fl
     np.testing.assert_allclose(readings["toe_deg"], [toe, toe], rtol=0.0, atol=0.501e-7)
 
 
+@pytest.mark.parametrize("built", ["hinged body", "hinge joint", "fixed"])
 @pytest.mark.parametrize("sweep", np.radians([10.0, 18.0, 25.0]))
-def test_the_closed_form_holds_over_the_whole_swing(sweep: float) -> None:
+def test_the_closed_form_holds_over_the_whole_swing(sweep: float, built: str) -> None:
     turn = np.radians(np.linspace(-60.0, 60.0, 121))
-    readings = corner_readings(arm_turned(sweep, turn))
+    readings = corner_readings(arm_turned(sweep, turn, built))
     camber = -np.degrees(np.arcsin(np.sin(sweep) * np.sin(turn)))
     toe = np.degrees(
         np.arctan2(

@@ -137,7 +137,7 @@ def arm_behind(angle_deg: float, axle: str, shaft: bool) -> Corner:
     reach = 900.0 * (-1.0 if axle == "front" else 1.0)
     start = centre if shaft else contact
     pivot = start + np.array([reach, -200.0, 900.0 * np.tan(np.radians(angle_deg))])
-    points = {"arm.inner_pivot": pivot, "arm.outer_pivot": pivot + [0.0, 150.0, 0.0], "wheel.centre": centre}
+    points = {"arm.inner_pivot": pivot, "arm.outer_pivot": pivot + np.array([0.0, 150.0, 0.0]), "wheel.centre": centre}
     return Corner(
         semi_trailing_arm.LAYOUT.mechanism(points),
         Wheel(centre, loaded_radius=300.0),

@@ -83,9 +83,11 @@ def size(text: str) -> tuple[int, int]:
     )
 
 
-def open_project(path: str, allow_plugins: bool) -> Project:
-    """Load a project and say, on standard error, what is out of the ordinary about it."""
+def open_project(path: str, allow_plugins: bool, quiet: bool = False) -> Project:
+    """Load a project and, unless ``quiet``, say on standard error what is out of the ordinary about it."""
     project = load_project(path, allow_plugins=allow_plugins)
+    if quiet:
+        return project
     for part in project.parts:
         if part.dropped_triangles:
             note(f"part '{part.name}': {part.dropped_triangles} degenerate triangles dropped")

@@ -8,8 +8,9 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from knucklepath.kinematics.clearance.gap import Gap
 from knucklepath.kinematics.clearance.pairs import pairs_to_check
-from knucklepath.kinematics.clearance.sampled import Gap, sampled_gaps
+from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.motion import solve_motion
 from knucklepath.viewer import CAUTION
 from knucklepath.viewer.commands.arguments import UsageError, explain_limit, note, number, open_project, write_text
@@ -27,7 +28,7 @@ WIDE = 120
 def run(options: argparse.Namespace) -> int:
     """Search the gaps and report them; 1 when a pair is too tight or touches, or the mechanism locks."""
     tolerance = number(options.tolerance, "--tolerance", positive=True)
-    project = open_project(options.project, options.allow_plugins)
+    project = open_project(options.project, options.allow_plugins, getattr(options, "quiet", False))
     rules: Sequence[ClearanceRule] = project.clearances
     if options.pair is not None:
         rules = _one_pair(options.pair, project)

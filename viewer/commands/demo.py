@@ -30,7 +30,7 @@ def run(options: argparse.Namespace) -> int:
         shutil.copytree(source, project_folder, dirs_exist_ok=True, ignore=shutil.ignore_patterns("__pycache__"))
     project = str(project_folder)
     print(f"The demo is an invented car. Its project is in {project_folder}; results go to {folder}.\n")
-    common = {"project": project, "allow_plugins": False}
+    common = {"project": project, "allow_plugins": False, "quiet": True}
     table = argparse.Namespace(**common, travel=None, rack=None, csv=str(folder / "sweep.csv"))
     sweep.run(table)
     readable = argparse.Namespace(**common, travel=None, rack="0", csv=None)
@@ -53,7 +53,7 @@ def _draw(project_path: str, folder: Path) -> None:
     from knucklepath.viewer.exports.movie import write_movie
     from knucklepath.viewer.exports.picture import write_picture
 
-    project = open_project(project_path, allow_plugins=False)
+    project = open_project(project_path, allow_plugins=False, quiet=True)
     bump, lock = project.bump, project.rack_each_way or 0.0
     poses = (
         ("corner", "corner", 0.0, 0.0),

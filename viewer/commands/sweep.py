@@ -32,7 +32,7 @@ NEAR_SINGULAR = 0.02
 
 def run(options: argparse.Namespace) -> int:
     """Solve the sweep and write it; 1 when some poses cannot be reached."""
-    project = open_project(options.project, options.allow_plugins)
+    project = open_project(options.project, options.allow_plugins, getattr(options, "quiet", False))
     travel_count, rack_count = FILE_COUNTS if options.csv else TABLE_COUNTS
     travel = (
         spread(options.travel, "--travel")

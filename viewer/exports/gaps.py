@@ -6,7 +6,7 @@ import json
 from collections.abc import Sequence
 from typing import Any
 
-from knucklepath.kinematics.clearance.sampled import Gap
+from knucklepath.kinematics.clearance.gap import Gap
 from knucklepath.kinematics.motion import Motion
 from knucklepath.viewer import CAUTION
 from knucklepath.viewer.exports.tables import figure

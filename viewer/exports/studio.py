@@ -171,10 +171,10 @@ class Studio:
         return Image.fromarray(np.ascontiguousarray(pixels), "RGB")
 
     def _words(self, pose: Motion, caution: str) -> Caption:
-        project, row = self.project, pose[None]
-        place = f"travel {signed(float(row.travel_mm[0]), 1)}\N{THIN SPACE}mm"
+        project = self.project
+        place = f"travel {signed(float(pose.travel_mm), 1)}\N{THIN SPACE}mm"
         if project.corner.steered:
-            place += f" · rack {signed(float(row.rack_mm[0]), 1)}\N{THIN SPACE}mm"
+            place += f" · rack {signed(float(pose.rack_mm), 1)}\N{THIN SPACE}mm"
         date = datetime.fromtimestamp(project.path.stat().st_mtime).date().isoformat()
         return Caption(
             title=project.title,
@@ -195,8 +195,8 @@ def figures(pose: Motion, registry: Registry) -> tuple[Figure, ...]:
     """The readings that a picture shows; those that do not exist for the layout are left out."""
     wanted = {name for name, *_ in SHOWN}
     readings = [reading for reading in registry.readings if reading.id in wanted]
-    values = corner_readings(pose[None], readings)
-    by_id = {reading.id: float(values[reading.column][0]) for reading in readings if reading.column in values}
+    values = corner_readings(pose, readings)
+    by_id = {reading.id: float(values[reading.column]) for reading in readings if reading.column in values}
     shown = []
     for name, title, digits, unit, widest in SHOWN:
         value = by_id.get(name, float("nan"))
