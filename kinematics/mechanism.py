@@ -275,6 +275,21 @@ class Mechanism:
                 pairs.add(frozenset((joint.body_a, joint.body_b)))
         return frozenset(pairs)
 
+    def shared_points(self, a: str, b: str) -> tuple[str, ...]:
+        """Names of the points at which two bodies (rods count) are joined and that stand still in both of them."""
+        names: list[str] = []
+        for joint in self.joints:
+            if isinstance(joint, Rod):
+                ends = {joint.body_a: joint.point_a, joint.body_b: joint.point_b}
+                if joint.name in (a, b):
+                    names += [point for body, point in ends.items() if body in (a, b)]
+            elif {joint.body_a, joint.body_b} == {a, b} and not isinstance(joint, PointOnLine):
+                names += joint.points
+        for body in self.bodies:
+            if isinstance(body, HingedBody) and {body.name, body.parent} == {a, b}:
+                names += body.axis
+        return tuple(dict.fromkeys(names))
+
     def with_points(self, points: Mapping[str, ArrayLike]) -> Mechanism:
         """Return the same mechanism with some points replaced; arrays (..., 3) make geometry variants."""
         for name in points:

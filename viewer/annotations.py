@@ -23,6 +23,8 @@ from knucklepath.viewer.theme import BODY, GRID_PX, HEADING, NUMBER, SMALL, Them
 BUSY_DIFFERENCE = 20
 #: Lengths that a scale bar may have, mm.
 BAR_LENGTHS = (1, 2, 5, 10, 20, 50, 100, 200, 500, 1000, 2000, 5000)
+#: A picture lower than this, px, is a thumbnail: words would cover it.
+LOWEST_WITH_WORDS = 200
 #: How opaque the plates of labels are, and the veil under the words at the edges, of 255.
 PLATE_ALPHA, VEIL_ALPHA = 222, 200
 
@@ -79,6 +81,8 @@ class Annotator:
         The finished picture, RGB, ``size`` px.
         """
         times = drawn.width // self.size[0]
+        if self.size[1] < LOWEST_WITH_WORDS:
+            return drawn.reduce(times) if times > 1 else drawn
         furniture = _Furniture(self, caption)
         placed = self._place(drawn, labels, furniture.boxes)
         brush = ImageDraw.Draw(drawn, "RGBA")
@@ -202,7 +206,7 @@ class _Furniture:
             self._line(self._edge, base, line, SMALL, "muted")
             base -= 1.9 * step
         self.boxes.append(Box(self._edge, base, width - self._edge, height - self._edge))
-        return base - 0.5 * step
+        return base - 1.4 * step
 
     def _scale(self, width: int, floor: float, step: float) -> float:
         """Scale bar and source at the right; gives where they begin."""

@@ -34,11 +34,15 @@ NO_DIRECTION = 1e-6
 
 @dataclass(frozen=True)
 class ClearanceRule:
-    """What must stay apart: two names, either of them "*", and the gap asked for, mm."""
+    """What must stay apart: two names, either of them "*", and the gap asked for, mm.
+
+    relief : radius, mm, about the joints that both parts share, inside which they may touch; 0 for none.
+    """
 
     a: str
     b: str
     gap: float
+    relief: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -189,7 +193,7 @@ def build_rules(
         path = ("clearances", position, "between")
         if a == b and a != "*":
             raise source.error(path, f"names '{printable(a)}' twice; name two things that must stay apart")
-        rule = ClearanceRule(a, b, entry["gap"])
+        rule = ClearanceRule(a, b, entry["gap"], entry.get("relief", 0.0))
         try:
             pairs_to_check(corner, solids, (rule,))
         except PairError as error:

@@ -33,7 +33,7 @@ commands:
   sweep       readings over travel and rack, as a table or CSV
   picture     one picture (PNG) of a pose
   movie       the motion as GIF, or as MP4 with the extra 'movie'
-  clearance   smallest gaps between parts over the motion
+  clearance   smallest gaps between parts, proven over the whole motion
   layouts     installed layouts and the points they need
   doctor      what this machine can draw, and what to install if it cannot
 
@@ -159,10 +159,11 @@ def _parser() -> _Parser:
     clearance = _command(
         commands,
         "clearance",
-        "Smallest gap of each pair over travel and rack, sampled on a grid and sharpened: a search, not a proof.",
+        "The smallest gap of each pair over travel and rack: proven for the whole motion, not for a choice of poses.",
         "knucklepath clearance my-axle\n"
         "knucklepath clearance my-axle --pair tyre,lower_arm\n"
-        "knucklepath clearance my-axle --json gaps.json",
+        "knucklepath clearance my-axle --json gaps.json\n"
+        "knucklepath clearance my-axle --pair tyre,tie_rod --map gaps.png",
     )
     clearance.add_argument("--json", metavar="OUT", help="write the result as JSON; - is standard output")
     clearance.add_argument(
@@ -171,6 +172,8 @@ def _parser() -> _Parser:
     clearance.add_argument(
         "--pair", metavar="A,B", help="check this pair only; names of parts, rods, arms, 'tyre', 'rim'"
     )
+
+    clearance.add_argument("--map", metavar="OUT.png", help="draw the gap of the worst pair over travel and rack")
 
     layouts = _command(
         commands,

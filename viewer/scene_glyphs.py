@@ -57,12 +57,14 @@ class _Batch:
 
     def fill(self, points: Array, lengths: NDArray[np.int64], kind: str) -> None:
         """Take points (n, 3) in runs of ``lengths``: each run one line, triangle or dot. Does nothing if none moved."""
-        if np.array_equal(points, self._filled[0]) and np.array_equal(lengths, self._filled[1]):
+        before, self._filled = self._filled, (points, lengths)
+        same_cells = np.array_equal(lengths, before[1])
+        if same_cells and np.array_equal(points, before[0]):
             return
-        self._filled = (points, lengths)
         set_points(self._points, points)
-        set_cells(self._cells, lengths, np.arange(len(points)))
-        {"line": self.data.SetLines, "triangle": self.data.SetPolys, "dot": self.data.SetVerts}[kind](self._cells)
+        if not same_cells:
+            set_cells(self._cells, lengths, np.arange(len(points)))
+            {"line": self.data.SetLines, "triangle": self.data.SetPolys, "dot": self.data.SetVerts}[kind](self._cells)
         self.data.Modified()
 
     def show(self, visible: bool) -> None:

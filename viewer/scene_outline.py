@@ -16,7 +16,7 @@ from knucklepath.viewer.vtk_arrays import set_cells, set_points
 Array: TypeAlias = NDArray[np.float64]
 Faces: TypeAlias = NDArray[np.int32]
 
-OPACITY = 0.55
+OPACITY = 0.40
 
 
 class Outline:
@@ -31,7 +31,11 @@ class Outline:
         corners = vertices[faces]
         normals = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
         self._normals, self._middles = normals, corners.mean(axis=1)
-        self._edges, self._beside = shared_edges(faces)
+        edges, beside = shared_edges(faces)
+        # an edge that is a valley is never part of a contour; grooves would only scribble over what is behind
+        across = self._middles[beside[:, 1]] - self._middles[beside[:, 0]]
+        ridge = np.einsum("ij,ij->i", normals[beside[:, 0]], across) <= 0.0
+        self._edges, self._beside = edges[ridge], beside[ridge]
         self._seen: NDArray[np.bool_] = np.zeros(len(self._edges), dtype=bool)
         self._data = vtkPolyData()
         points = vtkPoints()

@@ -85,6 +85,7 @@ CLEARANCES = Tables(
         {
             "between": Texts('["tyre", "lower_arm"]', required=True, count=2),
             "gap": Number("8.0", required=True, length=True, least=0.0),
+            "relief": Number("25.0", length=True, over=0.0, most=500.0),
         }
     )
 )

@@ -7,7 +7,7 @@ from typing import Any, TypeAlias
 import numpy as np
 from numpy.typing import NDArray
 from vtkmodules.util import numpy_support
-from vtkmodules.vtkCommonCore import vtkPoints
+from vtkmodules.vtkCommonCore import vtkPoints, vtkUnsignedCharArray
 from vtkmodules.vtkCommonDataModel import vtkCellArray, vtkPolyData
 
 Array: TypeAlias = NDArray[np.float64]
@@ -49,3 +49,12 @@ def triangle_data(vertices: Array, faces: NDArray[np.int32]) -> vtkPolyData:
     data.SetPoints(points)
     data.SetPolys(cells)
     return data
+
+
+def drawn_pixels(window: Any) -> NDArray[np.uint8]:
+    """Draw a render window and read it: (height, width, 3), top row first."""
+    window.Render()
+    width, height = window.GetSize()
+    found = vtkUnsignedCharArray()
+    window.GetPixelData(0, 0, width - 1, height - 1, 0, found, 0)
+    return np.ascontiguousarray(to_numpy(found).reshape(height, width, 3)[::-1])

@@ -6,11 +6,16 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from difflib import get_close_matches
 from itertools import combinations
-from typing import Protocol
+from typing import Protocol, TypeAlias
+
+import numpy as np
+from numpy.typing import NDArray
 
 from knucklepath.kinematics.clearance.solids import Solid
 from knucklepath.kinematics.errors import KnucklepathError
 from knucklepath.kinematics.wheel import Corner
+
+Array: TypeAlias = NDArray[np.float64]
 
 
 class PairError(KnucklepathError):
@@ -32,14 +37,28 @@ class Rule(Protocol):
     def gap(self) -> float:
         """The gap asked for, mm."""
 
+    @property
+    def relief(self) -> float:
+        """Radius, mm, about the joints that both parts share, inside which they may touch; 0 for none."""
+
+
+@dataclass(frozen=True)
+class Relief:
+    """A sphere about a joint of both parts inside which contact is ignored: centre (3,) at design, radius, mm."""
+
+    joint: str
+    centre: Array
+    radius_mm: float
+
 
 @dataclass(frozen=True)
 class Pair:
-    """Two solids and the gap asked of them, mm."""
+    """Two solids, the gap asked of them, mm, and where they may touch."""
 
     a: Solid
     b: Solid
     required_mm: float
+    relief: tuple[Relief, ...] = ()
 
 
 def pairs_to_check(corner: Corner, solids: Sequence[Solid], rules: Sequence[Rule]) -> tuple[Pair, ...]:
@@ -69,8 +88,18 @@ def pairs_to_check(corner: Corner, solids: Sequence[Solid], rules: Sequence[Rule
                     continue
                 key = frozenset((a.name, b.name))
                 if key not in into or into[key].required_mm < rule.gap:
-                    into[key] = Pair(a, b, rule.gap)
+                    into[key] = Pair(a, b, rule.gap, _relief(corner, a, b, rule.relief))
     return tuple({**matched, **named}.values())
+
+
+def _relief(corner: Corner, a: Solid, b: Solid, radius_mm: float) -> tuple[Relief, ...]:
+    """Spheres about every joint that two parts share. Both carry the joint's point with them, so it stays a sphere."""
+    if radius_mm <= 0.0:
+        return ()
+    names = corner.mechanism.shared_points(corner.body(a.body), corner.body(b.body))
+    if not names:
+        raise PairError(f"'{a.name}' and '{b.name}' share no joint, so there is nowhere to give relief; leave it out")
+    return tuple(Relief(name, corner.point(name), radius_mm) for name in names)
 
 
 def _may_meet(corner: Corner, a: Solid, b: Solid) -> bool:

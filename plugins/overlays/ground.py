@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from knucklepath.kinematics.corner import contact_point
-from knucklepath.plugins.overlays.glyphs import LOOKS, Disc, Glyph, Grid, Label, Overlay, Point, Ring, State
+from knucklepath.plugins.overlays.glyphs import LOOKS, Glyph, Grid, Label, Overlay, Point, Ring, State
 
 #: Lines of the ground are this far apart, mm.
 SPACING_MM = 100.0
@@ -32,7 +32,6 @@ def contact_patch(state: State) -> list[Glyph]:
         return []
     radius = 0.028 * state.size_mm
     return [
-        Disc(contact, UP, 0.45 * radius, "contact-patch"),
         Ring(contact, UP, radius, "contact-patch", 1.5),
         Point(contact, "contact-patch", 7.0),
         Label(contact, "contact point", "contact-patch", priority=7),

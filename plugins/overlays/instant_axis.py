@@ -19,7 +19,7 @@ from knucklepath.plugins.overlays.glyphs import (
 )
 
 #: The axis is drawn this many sizes of the mechanism to each side of where it passes nearest the wheel.
-HALF_SHARE = 3.2
+HALF_SHARE = 4.0
 #: A pitch smaller than this, mm/rad, is a plain hinge: no hand to show.
 NO_PITCH = 0.05
 

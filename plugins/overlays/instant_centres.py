@@ -88,8 +88,9 @@ def _centre(state: State, view: View, start: Array) -> Centre | None:
     at = front_instant_centre(state.pose) if view is FRONT else side_instant_centre(state.pose)
     along = at - start
     along[view.normal] = 0.0
-    if np.isnan(along).any() or not np.isfinite(start).all():
+    if np.isnan(along[view.across]) or not np.isfinite(start).all():
         return None
+    # at infinity the height may be inf or nan (0/0: level velocity); the direction is found from the velocity below
     distance = float(np.linalg.norm(along))
     if np.isfinite(distance) and distance < ENDLESS_MM:
         return Centre(view, start, along / distance, distance) if distance > 0.0 else None

@@ -103,8 +103,7 @@ def test_an_outside_layout_makes_a_project_that_sweeps_draws_and_checks(
     assert checked.returncode in (0, 1), checked.stderr
     pairs = json.loads((tmp_path / "gaps.json").read_text())["pairs"]
     assert pairs
-    assert {pair["verdict"] for pair in pairs} <= {"tight", "touching", "undecided"}
-    assert checked.returncode == int(any(pair["verdict"] in ("tight", "touching") for pair in pairs))
+    assert checked.returncode == int(any(pair["verdict"] != "clear" for pair in pairs))
 
 
 def test_layouts_lists_the_outside_layout_with_its_distribution(scratch: ScratchEnvironment, tmp_path: Path) -> None:

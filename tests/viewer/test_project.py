@@ -10,6 +10,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from knucklepath.kinematics.clearance.pairs import pairs_to_check
 from knucklepath.kinematics.clearance.primitives import cylinder
 from knucklepath.kinematics.errors import ProjectError
 from knucklepath.kinematics.mechanism import Layout
@@ -179,7 +180,9 @@ def test_a_tyre_by_another_name_still_replaces_the_tyre_but_a_hub_cap_does_not(
     full_project.write_text(text.replace('name  = "tyre"', 'name  = "Front tire, wet"'))
     assert "tyre" not in names(full_project, registry)
     # a clearance that asks for the tyre means that part
-    assert load_project(full_project, registry).clearances[0].a == "Front tire, wet"
+    project = load_project(full_project, registry)
+    (pair,) = pairs_to_check(project.corner, project.solids(), project.clearances[:1])
+    assert pair.a.name == "Front tire, wet"
     full_project.write_text(text.replace('name  = "tyre"', 'name  = "hub cap"'))
     assert names(full_project, registry)["tyre"] is True
 

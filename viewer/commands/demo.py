@@ -36,7 +36,9 @@ def run(options: argparse.Namespace) -> int:
     readable = argparse.Namespace(**common, travel=None, rack="0", csv=None)
     sweep.run(readable)
     print()
-    gaps = argparse.Namespace(**common, json=str(folder / "gaps.json"), tolerance="0.05", pair=None)
+    gaps = argparse.Namespace(
+        **common, json=str(folder / "gaps.json"), tolerance="0.05", pair=None, map=str(folder / "gap-map.png")
+    )
     clearance.run(gaps)
     print()
     drawing = can_draw()

@@ -6,15 +6,15 @@ import json
 from collections.abc import Sequence
 from typing import Any
 
-from knucklepath.kinematics.clearance.gap import Gap
+from knucklepath.kinematics.clearance.gap import ASSUMPTIONS, SAMPLED, Gap
 from knucklepath.kinematics.motion import Motion
 from knucklepath.viewer import CAUTION
 from knucklepath.viewer.exports.tables import figure
 from knucklepath.viewer.project import Project
 
 
-def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float) -> str:
-    """The result as JSON text, worst pair first."""
+def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float, method: str) -> str:
+    """The result as JSON text, worst pair first; ``method`` is "proven" or "sampled"."""
     travel, rack = motion.travel_mm, motion.rack_mm
     result: dict[str, Any] = {
         "motion": {
@@ -22,8 +22,8 @@ def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float) -> str:
             "rack_mm": [float(rack.min()), float(rack.max())],
         },
         "tolerance_mm": tolerance_mm,
-        "method": "sampled",
-        "poses": int(motion.reached.sum()),
+        "method": method,
+        "assumes": ASSUMPTIONS if method == "proven" else SAMPLED,
         "caution": CAUTION,
         "pairs": [_pair(gap) for gap in gaps],
     }

@@ -123,7 +123,7 @@ class Studio:
             camera = self.scene.look(self.look, size[0] / size[1])
             self._window.Render()
         self.annotator = Annotator(size, camera, self._theme, project.corner.wheel.centre)
-        self._caption: Caption | None = None
+        self.caption: Caption | None = None
         self._texts: dict[str, str] = {}
 
     def __enter__(self) -> Studio:
@@ -143,14 +143,14 @@ class Studio:
         """
         self.scene.show(pose, case)
         labels = {item.key: item.label for item in self.scene.labels}
-        if new_numbers or self._caption is None:
+        if new_numbers or self.caption is None:
             self._texts = {key: label.text for key, label in labels.items()}
             cautious = case is not None or any(glyph.role in CAUTIOUS_ROLES for glyph in self.scene.glyphs)
-            self._caption = self._words(pose, CAUTION if cautious else "")
+            self.caption = self._words(pose, CAUTION if cautious else "")
         kept: dict[str, Label] = {
             key: replace(label, text=self._texts.get(key, label.text)) for key, label in labels.items()
         }
-        return self.annotator.finish(self._draw(), self._caption, kept)
+        return self.annotator.finish(self._draw(), self.caption, kept)
 
     def faults(self) -> Iterator[str]:
         """What to say about overlays that failed, with the distribution that brought them."""
@@ -158,17 +158,9 @@ class Studio:
             yield f"overlay '{name}' of {self.project.registry.origin.get(name, '?')} is left out: {reason}"
 
     def _draw(self) -> Image.Image:
-        from vtkmodules.vtkCommonCore import vtkUnsignedCharArray
+        from knucklepath.viewer.vtk_arrays import drawn_pixels
 
-        from knucklepath.viewer.vtk_arrays import to_numpy
-
-        window = self._window
-        window.Render()
-        width, height = (self._times * side for side in self.size)
-        found = vtkUnsignedCharArray()
-        window.GetPixelData(0, 0, width - 1, height - 1, 0, found, 0)
-        pixels = to_numpy(found).reshape(height, width, 3)[::-1]
-        return Image.fromarray(np.ascontiguousarray(pixels), "RGB")
+        return Image.fromarray(drawn_pixels(self._window), "RGB")
 
     def _words(self, pose: Motion, caution: str) -> Caption:
         project = self.project
