@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import json
 import shutil
 from importlib.resources import as_file, files
 from pathlib import Path
@@ -56,13 +57,13 @@ def _draw(project_path: str, folder: Path) -> None:
     from knucklepath.viewer.exports.picture import write_picture
 
     project = open_project(project_path, allow_plugins=False, quiet=True)
-    bump, lock = project.bump, project.rack_each_way or 0.0
+    worst = json.loads((folder / "gaps.json").read_text(encoding="utf-8"))["pairs"][0]
     poses = (
         ("corner", "corner", 0.0, 0.0),
         ("front", "front", 0.0, 0.0),
         ("side", "side", 0.0, 0.0),
         ("top", "top", 0.0, 0.0),
-        ("full-bump-and-lock", "corner", bump, lock),
+        ("tightest", "corner", worst["travel_mm"], worst["rack_mm"]),
     )
     for name, look, travel, rack in poses:
         out = folder / f"{name}.png"
