@@ -38,6 +38,16 @@ def nodes(count: int) -> Array:
     return np.cos(np.pi * (np.arange(count) + 0.5) / count)
 
 
+def _half_way(count: int) -> Array:
+    """Points between the nodes, and both ends."""
+    return np.cos(np.pi * np.arange(count + 1) / count)
+
+
+def _spread(low: float, high: float, line: Array) -> Array:
+    """Points of −1…1 on low…high; one point where there is no width."""
+    return low + (high - low) * (line + 1.0) / 2.0 if high > low else np.array([low])
+
+
 def fit(values: Array) -> Array:
     """Coefficients (nu, nv, k) of the polynomial through values at the nodes (nu, nv, k)."""
     out = values
@@ -56,7 +66,7 @@ def tiles(
     high: Array,
     reach_mm: float,
     accuracy_mm: float = 1e-6,
-    degrees: tuple[int, int] = (11, 9),
+    degrees: tuple[int, int] = (14, 11),
     depth: int = 0,
 ) -> list[Tile]:
     """Cover a rectangle with tiles on which the polynomials keep to the solved poses.
@@ -66,21 +76,16 @@ def tiles(
     """
     wide = high > low
     counts = [degrees[k] if wide[k] else 1 for k in range(2)]
-    lines = [low[k] + (high[k] - low[k]) * (nodes(counts[k]) + 1.0) / 2.0 for k in range(2)]
-    u, v = np.meshgrid(*lines, indexing="ij")
-    coefficients = fit(poses(u.ravel(), v.ravel()).reshape(counts[0], counts[1], 12))
-    # half-way between the nodes the polynomial is farthest off; the corners are tried besides
-    tries = []
-    for k in range(2):
-        if wide[k]:
-            between = np.cos(np.pi * np.arange(counts[k] + 1) / counts[k])
-            tries.append(low[k] + (high[k] - low[k]) * (between + 1.0) / 2.0)
-        else:
-            tries.append(low[k : k + 1])
-    u, v = (axis.ravel() for axis in np.meshgrid(*tries, indexing="ij"))
+    # one call solves the nodes and, half-way between them and at the corners, where the polynomial is farthest off
+    at_nodes = [_spread(low[k], high[k], nodes(counts[k])) for k in range(2)]
+    between = [_spread(low[k], high[k], _half_way(counts[k])) for k in range(2)]
+    both = [np.meshgrid(*lines, indexing="ij") for lines in (at_nodes, between)]
+    u, v = (np.concatenate([mesh[k].ravel() for mesh in both]) for k in range(2))
     solved = poses(u, v)
+    number = counts[0] * counts[1]
+    coefficients = fit(solved[:number].reshape(counts[0], counts[1], 12))
     tile = Tile(low, high, coefficients, 0.0, np.zeros((2, 2)))
-    apart = np.abs(evaluate(tile, u, v) - solved)
+    apart = np.abs(evaluate(tile, u[number:], v[number:]) - solved[number:])
     error = float(np.max(apart[:, :9].max(axis=1) * 3.0 * reach_mm + apart[:, 9:].max(axis=1) * 1.7321))
     if error <= accuracy_mm or depth >= 8:
         return [Tile(low, high, coefficients, error, _third(coefficients, low, high, reach_mm))]

@@ -32,10 +32,24 @@ def winding_number(point: Array, vertices: Array, faces: Faces) -> float:
     return float(np.arctan2(triple, dots).sum() / (2.0 * np.pi))
 
 
+def without_repeats(vertices: Array, faces: Faces) -> Faces:
+    """The triangles (k, 3) of a mesh, each once: one that is listed again with the same winding adds nothing."""
+    corners = _merged(vertices)[faces]
+    first = corners.argmin(axis=1)[:, None]
+    turned = np.take_along_axis(corners, (first + np.arange(3)) % 3, axis=1)
+    _, kept = np.unique(turned, axis=0, return_index=True)
+    return np.ascontiguousarray(faces[np.sort(kept)])
+
+
+def _merged(vertices: Array) -> NDArray[np.int64]:
+    """For every vertex the number of the place that it lies at."""
+    _, same = np.unique(np.round(vertices / SAME_VERTEX).astype(np.int64), axis=0, return_inverse=True)
+    return same.reshape(-1).astype(np.int64)
+
+
 def is_closed(vertices: Array, faces: Faces) -> bool:
     """True when every edge is shared by two triangles that run along it in opposite directions."""
-    _, same = np.unique(np.round(vertices / SAME_VERTEX).astype(np.int64), axis=0, return_inverse=True)
-    corners = same.reshape(-1)[faces].astype(np.int64)
+    corners = _merged(vertices)[faces]
     edges = np.concatenate([corners[:, [0, 1]], corners[:, [1, 2]], corners[:, [2, 0]]])
     edges = edges[edges[:, 0] != edges[:, 1]]
     base = np.int64(len(vertices) + 1)
@@ -45,8 +59,7 @@ def is_closed(vertices: Array, faces: Faces) -> bool:
 
 def one_vertex_of_each_piece(vertices: Array, faces: Faces) -> Array:
     """One vertex (k, 3) of every connected piece of a mesh."""
-    _, same = np.unique(np.round(vertices / SAME_VERTEX).astype(np.int64), axis=0, return_inverse=True)
-    corners = same.reshape(-1)[faces]
+    corners = _merged(vertices)[faces]
     label = np.arange(int(corners.max()) + 1)
     while True:
         least = label[corners].min(axis=1)
@@ -63,6 +76,10 @@ def one_vertex_of_each_piece(vertices: Array, faces: Faces) -> Array:
 
 def wholly_inside(vertices: Array, faces: Faces, outer_vertices: Array, outer_faces: Faces) -> bool:
     """True when a piece of the first mesh lies inside the second, closed one; their surfaces must not meet."""
-    return any(
-        winding_number(point, outer_vertices, outer_faces) > 0.5 for point in one_vertex_of_each_piece(vertices, faces)
-    )
+    return any_inside(one_vertex_of_each_piece(vertices, faces), outer_vertices, outer_faces)
+
+
+def any_inside(points: Array, vertices: Array, faces: Faces) -> bool:
+    """True when any of some points (k, 3) lies inside a closed mesh, whichever way it is wound."""
+    near = points[((points >= vertices.min(axis=0)) & (points <= vertices.max(axis=0))).all(axis=1)]
+    return any(abs(winding_number(point, vertices, faces)) > 0.5 for point in near)

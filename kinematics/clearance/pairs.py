@@ -17,6 +17,9 @@ from knucklepath.kinematics.wheel import Corner
 
 Array: TypeAlias = NDArray[np.float64]
 
+#: Parts of the wheel that may be named by what they are.
+WHEEL_ROLES = ("tyre", "rim")
+
 
 class PairError(KnucklepathError):
     """A clearance names something that is not there."""
@@ -110,10 +113,11 @@ def _meant(corner: Corner, solids: Sequence[Solid], name: str) -> list[Solid]:
     """The solids that a name means."""
     if name == "*":
         return list(solids)
-    own = [solid for solid in solids if solid.name == name]
+    own = [solid for solid in solids if solid.name in (name, f"{name} tube")]
     if own:
         return own
-    on_body = [solid for solid in solids if solid.body == name or solid.role == name]
+    on_body = [solid for solid in solids if solid.body == name]
+    on_body = on_body or [solid for solid in solids if name in WHEEL_ROLES and solid.role == name]
     if on_body:
         return on_body
     if name in corner.body_names:
@@ -121,6 +125,8 @@ def _meant(corner: Corner, solids: Sequence[Solid], name: str) -> list[Solid]:
         if on_body:
             return on_body
         raise PairError(f"nothing stands on '{name}', so no gap to it can be measured; give it a part or show its rod")
+    if name == "spring":
+        raise PairError("the spring-damper changes its length and is not checked yet; leave 'spring' out")
     known = list(dict.fromkeys([*(solid.name for solid in solids), *(solid.body for solid in solids)]))
     near = get_close_matches(name, known, n=1)
     hint = f"did you mean '{near[0]}'? " if near else ""

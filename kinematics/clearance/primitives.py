@@ -1,7 +1,9 @@
 """Closed triangle meshes of simple solids, as plain arrays. Knows no mechanism.
 
 Every function returns ``(vertices (n, 3), faces (m, 3))`` in mm, watertight and wound outward. Round things are
-polygons that enclose the true solid: they are fatter by at most ``radius · (1/cos(π/segments) − 1)``.
+polygons that enclose the true solid: outer faces lie outside it and bores inside it, by at most
+``radius · (1/cos(π/segments) − 1)``, about twice that on a ball, which is curved both ways. So a gap between meshes is
+never larger than the gap between the solids.
 """
 
 from __future__ import annotations
@@ -15,6 +17,11 @@ from numpy.typing import ArrayLike, NDArray
 Array: TypeAlias = NDArray[np.float64]
 Faces: TypeAlias = NDArray[np.int32]
 Mesh: TypeAlias = tuple[Array, Faces]
+
+#: Corners of a tyre's round shoulder.
+SHOULDER_STEPS = 6
+#: A step along the axis below this share of a profile's length is rounding: the face is flat across the axis.
+FLAT_SHARE = 1e-9
 
 
 def axis_frame(direction: ArrayLike) -> Array:
@@ -42,16 +49,16 @@ def lathe(
     start, direction : (3,) a point of the axis, mm, and its direction.
     profile : (p, 2) distance along the axis and radius, mm. An open profile begins and ends at radius 0; a
         ``ring`` is a closed one that nowhere touches the axis.
-    segments : number of sides; radii are enlarged so that the sides lie outside the round solid.
+    segments : number of sides. They lie outside the round solid: faces that look away from the axis have polygons
+        about their circles, faces that look towards it (bores) polygons within theirs.
     """
     outline = np.asarray(profile, dtype=float)
     angles = np.arange(segments) * (2.0 * np.pi / segments)
     frame = axis_frame(direction)
     circle = np.cos(angles)[:, None] * frame[:, 0] + np.sin(angles)[:, None] * frame[:, 1]
-    fatter = 1.0 / np.cos(np.pi / segments)
     origin = np.asarray(start, dtype=float)
-    inner = outline if ring else outline[1:-1]
-    vertices = (origin + inner[:, None, :1] * frame[:, 2] + inner[:, None, 1:] * fatter * circle[None]).reshape(-1, 3)
+    inner = _enclosing(outline, segments, ring)
+    vertices = (origin + inner[:, None, :1] * frame[:, 2] + inner[:, None, 1:] * circle[None]).reshape(-1, 3)
     rows = len(inner)
     here = np.arange(rows if ring else rows - 1)[:, None] * segments
     after = (np.arange(1, rows + 1) % rows if ring else np.arange(1, rows))[:, None] * segments
@@ -67,6 +74,26 @@ def lathe(
         faces.append(np.column_stack((np.full(segments, first), beside[0], rim)))
         faces.append(np.column_stack((np.full(segments, last), top, (rows - 1) * segments + beside[0])))
     return outward(vertices, np.concatenate(faces).astype(np.int32))
+
+
+def _enclosing(outline: Array, segments: int, ring: bool) -> Array:
+    """The profile (p, 2) whose polygons enclose the solid of the given one, without the poles of an open profile.
+
+    A corner between a face that looks outward and one that looks inward becomes two, joined by a narrow flat ring.
+    """
+    fatter = 1.0 / np.cos(np.pi / segments)
+    after = np.roll(outline, -1, axis=0)
+    # an open profile is closed along the axis, where the area needs no term
+    clockwise = float(np.sum(outline[:, 0] * after[:, 1] - after[:, 0] * outline[:, 1])) < 0.0
+    ahead = after[:, 0] - outline[:, 0]
+    level = np.abs(ahead) <= FLAT_SHARE * float(np.ptp(outline[:, 0]))
+    looks = np.where(level, 0.0, np.sign(ahead)) * (1.0 if clockwise else -1.0)
+    rows: list[tuple[float, float]] = []
+    for k in range(len(outline)) if ring else range(1, len(outline) - 1):
+        along, radius = outline[k]
+        sides = [fatter if side > 0.0 else 1.0 for side in (looks[k - 1], looks[k]) if side != 0.0] or [fatter]
+        rows.extend((along, radius * scale) for scale in dict.fromkeys(sides))
+    return np.array(rows)
 
 
 def signed_volume(vertices: Array, faces: Faces) -> float:
@@ -130,15 +157,17 @@ def tyre_ring(centre: ArrayLike, spin: ArrayLike, outer: float, width: float, in
     ----------
     outer, inner : radii at the tread and at the rim, mm; width : overall, mm.
 
-    The mesh encloses the ring: at 72 segments and a radius of 300 mm it is fatter by at most 0.29 mm.
+    The ring has chamfered beads, straight side walls and a flat tread; shoulders between them are rounded by 0.42 of
+    the wall's height or 0.36 of half the width, whichever is less. The mesh encloses it: at 72 segments and a radius
+    of 300 mm it is fatter by at most 0.29 mm.
     """
     half, wall = width / 2.0, outer - inner
     shoulder = min(0.42 * wall, 0.36 * half)
-    angles = np.linspace(0.0, np.pi / 2.0, 7)
-    right = np.column_stack((half - shoulder + shoulder * np.cos(angles), outer - shoulder + shoulder * np.sin(angles)))
-    # the arc's chords are pushed out so that they lie outside the round shoulder
-    right = (right - [half - shoulder, outer - shoulder]) / np.cos(np.pi / 24.0) + [half - shoulder, outer - shoulder]
-    right = np.minimum(right, [half, outer])
+    # corners between tangents of the round shoulder: its sides touch it from outside, the first and last are the
+    # side wall and the tread
+    angles = (np.arange(SHOULDER_STEPS) + 0.5) * (np.pi / 2.0 / SHOULDER_STEPS)
+    tangent = shoulder / np.cos(np.pi / 4.0 / SHOULDER_STEPS)
+    right = np.column_stack((half - shoulder + tangent * np.cos(angles), outer - shoulder + tangent * np.sin(angles)))
     bead = np.array([[0.84 * half, inner], [half, inner + 0.40 * (wall - shoulder)]])
     side = np.concatenate((bead, right))
     mirrored = side[::-1] * [-1.0, 1.0]

@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import TypeAlias
 
 import numpy as np
 from numpy.typing import NDArray
 
-from knucklepath.kinematics.clearance.pairs import Relief
+from knucklepath.kinematics.clearance.gap import sound_faces
+from knucklepath.kinematics.clearance.pairs import Pair, PairError, Relief
+from knucklepath.kinematics.clearance.solids import Solid
 
 Array: TypeAlias = NDArray[np.float64]
 Faces: TypeAlias = NDArray[np.int32]
@@ -30,6 +33,26 @@ def without_spheres(vertices: Array, faces: Faces, reliefs: Sequence[Relief]) ->
     flat = corners.reshape(-1, 3)
     unique, index = np.unique(flat, axis=0, return_inverse=True)
     return unique, index.reshape(-1, 3).astype(np.int32)
+
+
+def relieved(solid: Solid, reliefs: Sequence[Relief]) -> Solid:
+    """What relief spheres leave of a solid.
+
+    Raises
+    ------
+    PairError : nothing is left.
+    """
+    vertices = np.asarray(solid.vertices, dtype=float)
+    vertices, faces = without_spheres(vertices, sound_faces(solid, vertices), reliefs)
+    if not len(faces):
+        raise PairError(f"the relief swallows all of '{solid.name}'; make it smaller")
+    return replace(solid, vertices=vertices, faces=faces)
+
+
+def relief_note(pair: Pair) -> str:
+    """What a report says of a pair's relief."""
+    joints = " and ".join(relief.joint for relief in pair.relief)
+    return f"{pair.a.name} and {pair.b.name}: contact within {pair.relief[0].radius_mm:g} mm of {joints} is ignored."
 
 
 def _outside(corners: Array, centre: Array, radius: float) -> Array:

@@ -31,6 +31,8 @@ Role: TypeAlias = Literal["chassis", "knuckle", "arm", "rod", "tyre", "rim", "ra
 
 #: A rod's joint balls, over the rod's diameter.
 END_SHARE = 1.35
+#: Legs and spokes of no more than this length, mm, are not made: the balls at their ends are all there is.
+SHORTEST_LEG = 1.0
 #: Shares of a strut's length at design that its rod and its tube take; they overlap.
 STRUT_ROD_SHARE = 0.62
 STRUT_TUBE_SHARE = 0.55
@@ -115,9 +117,17 @@ def _arm(corner: Corner, body: HingedBody, diameter: float) -> Mesh | None:
     spring = corner.spring
     if spring is not None and corner.body(spring.on) == body.name:
         legs.append((_nearest_on(legs, spring.moving), spring.moving))
-    meshes = [cylinder(a, b, radius, 20) for a, b in legs if np.linalg.norm(b - a) > 1.0]
+    meshes = [cylinder(a, b, radius, 20) for a, b in legs if np.linalg.norm(b - a) > SHORTEST_LEG]
     meshes += [ball(point, END_SHARE * radius) for point in (*pivots, *ends)]
+    if body.name == corner.carrier:
+        meshes.append(_hub(corner, diameter))
     return merged(meshes)
+
+
+def _hub(corner: Corner, diameter: float) -> Mesh:
+    """A short cylinder along the spin axis, mostly inboard of the wheel centre, where the bearing is."""
+    centre, spin = corner.wheel.centre, corner.wheel.spin_axis
+    return cylinder(centre - 2.2 * diameter * spin, centre + 0.4 * diameter * spin, 1.7 * diameter, 32)
 
 
 def _nearest_on(legs: list[tuple[Array, Array]], point: Array) -> Array:
@@ -125,6 +135,8 @@ def _nearest_on(legs: list[tuple[Array, Array]], point: Array) -> Array:
     best, found = np.inf, point
     for a, b in legs:
         along = b - a
+        if np.linalg.norm(along) <= SHORTEST_LEG:
+            continue
         share = float(np.clip((point - a) @ along / (along @ along), 0.0, 1.0))
         at = a + share * along
         apart = float(np.linalg.norm(at - point))
@@ -137,17 +149,18 @@ def _spokes(corner: Corner, body: FreeBody, diameter: float) -> Mesh:
     """Spokes from every joint of a free body to its hub, and the hub along the spin axis on the carrier."""
     held = [name for name in corner.mechanism.attachments(body.name) if name != WHEEL_CENTRE]
     ends = [corner.point(name) for name in held]
+    spring = corner.spring
+    if spring is not None and corner.body(spring.on) == body.name:
+        ends.append(spring.moving)
     radius = 0.6 * diameter
     if body.name == corner.carrier:
-        hub = corner.wheel.centre
-        spin = corner.wheel.spin_axis
         # spokes meet inboard of the wheel centre, where a knuckle's bearing is
-        root = hub - spin * 1.6 * diameter
-        meshes = [cylinder(root - spin * 0.6 * diameter, hub + spin * 0.4 * diameter, 1.7 * diameter, 32)]
+        root = corner.wheel.centre - corner.wheel.spin_axis * 1.6 * diameter
+        meshes = [_hub(corner, diameter)]
     else:
         root = np.mean(ends, axis=0)
         meshes = [ball(root, radius)]
-    meshes += [cylinder(root, end, radius, 20) for end in ends if np.linalg.norm(end - root) > 1.0]
+    meshes += [cylinder(root, end, radius, 20) for end in ends if np.linalg.norm(end - root) > SHORTEST_LEG]
     meshes += [ball(end, END_SHARE * diameter / 2.0) for end in ends]
     return merged(meshes)
 

@@ -3,18 +3,12 @@
 from __future__ import annotations
 
 import math
-import os
 import sys
-import tempfile
-from collections.abc import Iterator
-from contextlib import contextmanager
-from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-from knucklepath.kinematics.errors import KnucklepathError, ReachError
-from knucklepath.kinematics.motion import Motion, find_limit
+from knucklepath.kinematics.errors import KnucklepathError
 from knucklepath.viewer.project import Project, load_project
 
 #: Poses of one sweep, at most: beyond it a typing slip is likelier than a need.
@@ -110,77 +104,3 @@ def check_rack(project: Project, rack_mm: NDArray[np.float64]) -> None:
     """
     if not project.corner.steered and np.any(rack_mm != 0.0):
         raise UsageError("--rack: this axle has no rack; leave --rack out, or add [rack] to the project")
-
-
-def explain_limit(motion: Motion) -> str:
-    """Say how far the mechanism goes when some poses of a motion cannot be reached.
-
-    The limit of travel is sought with the rack where the first such pose has it.
-    """
-    missed = np.argwhere(~motion.reached)
-    nearest = min(missed, key=lambda index: abs(float(motion.travel_mm[tuple(index)])))
-    travel, rack = float(motion.travel_mm[tuple(nearest)]), float(motion.rack_mm[tuple(nearest)])
-    limit = find_limit(motion.corner, "travel", travel, rack_mm=rack)
-    if limit is None:
-        return f"{len(missed)} poses cannot be reached on the design branch"
-    others = "".join(f" with {name} at {value:+.1f} mm" for name, value in limit.others.items() if value)
-    return (
-        f"the mechanism locks at {limit.input} {limit.value_mm:+.2f} mm{others}: {limit.reason}. "
-        f"{len(missed)} of {motion.reached.size} poses asked for lie beyond"
-    )
-
-
-def require_reached(motion: Motion) -> None:
-    """Refuse to go on with poses that cannot be reached.
-
-    Raises
-    ------
-    ReachError : with the limit and the reason.
-    """
-    if motion.reached.all():
-        return
-    missed = np.argwhere(~motion.reached)
-    nearest = min(missed, key=lambda index: abs(float(motion.travel_mm[tuple(index)])))
-    limit = find_limit(
-        motion.corner,
-        "travel",
-        float(motion.travel_mm[tuple(nearest)]),
-        rack_mm=float(motion.rack_mm[tuple(nearest)]),
-    )
-    value = limit.value_mm if limit else float("nan")
-    raise ReachError(explain_limit(motion), input=limit.input if limit else "travel", limit=value)
-
-
-@contextmanager
-def whole_file(out: str | Path, suffix: str = "") -> Iterator[Path]:
-    """Give a temporary path beside ``out`` and move it there only when all is written.
-
-    Raises
-    ------
-    UsageError : the folder of ``out`` does not exist, or ``out`` is a folder.
-    """
-    target = Path(out)
-    if target.is_dir():
-        raise UsageError(f"{out}: is a folder; give a file name")
-    if not target.parent.is_dir():
-        raise UsageError(f"{out}: the folder {target.parent} does not exist; make it first")
-    handle, name = tempfile.mkstemp(prefix=f".{target.stem}-", suffix=suffix or target.suffix, dir=target.parent)
-    os.close(handle)
-    temporary = Path(name)
-    try:
-        yield temporary
-        mask = os.umask(0)
-        os.umask(mask)
-        temporary.chmod(0o666 & ~mask)
-        temporary.replace(target)
-    finally:
-        temporary.unlink(missing_ok=True)
-
-
-def write_text(out: str, text: str) -> None:
-    """Write text to a file, all or nothing; "-" is standard output."""
-    if out == "-":
-        sys.stdout.write(text)
-        return
-    with whole_file(out) as path:
-        path.write_text(text, encoding="utf-8", newline="")

@@ -13,11 +13,13 @@ from knucklepath.kinematics.clearance.pairs import Pair, pairs_to_check
 from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.viewer import CAUTION
-from knucklepath.viewer.commands.arguments import UsageError, explain_limit, note, number, open_project, write_text
+from knucklepath.viewer.commands.arguments import UsageError, note, number, open_project
 from knucklepath.viewer.commands.progress import counting
 from knucklepath.viewer.exports.gaps import gaps_json, pose_text
 from knucklepath.viewer.exports.tables import figure
+from knucklepath.viewer.exports.writing import write_text
 from knucklepath.viewer.project import ClearanceRule, Project
+from knucklepath.viewer.reach import explain_limit
 
 #: Poses that tell where the mechanism locks, and at which distances are sampled where they cannot be proven.
 GRID = (23, 15)

@@ -9,17 +9,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from knucklepath.kinematics.motion import Motion, solve_motion
-from knucklepath.viewer.commands.arguments import (
-    MOST_POSES,
-    UsageError,
-    check_rack,
-    explain_limit,
-    open_project,
-    spread,
-    write_text,
-)
+from knucklepath.viewer.commands.arguments import MOST_POSES, UsageError, check_rack, open_project, spread
 from knucklepath.viewer.exports.tables import READABLE, figure, sweep_csv
+from knucklepath.viewer.exports.writing import write_text
 from knucklepath.viewer.project import Project
+from knucklepath.viewer.reach import explain_limit
 
 #: Poses over the project's limits where the user gives no count: for a file, and for reading.
 FILE_COUNTS = (23, 15)

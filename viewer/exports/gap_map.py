@@ -11,7 +11,7 @@ from knucklepath.kinematics.clearance.gap import Gap
 from knucklepath.kinematics.clearance.grid import gap_grid
 from knucklepath.kinematics.clearance.pairs import Pair
 from knucklepath.viewer import CAUTION
-from knucklepath.viewer.commands.arguments import whole_file
+from knucklepath.viewer.exports.writing import whole_file
 from knucklepath.viewer.project import Project
 from knucklepath.viewer.theme import LIGHT
 

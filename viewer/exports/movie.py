@@ -13,9 +13,10 @@ from PIL import Image
 
 from knucklepath.kinematics.errors import KnucklepathError
 from knucklepath.kinematics.motion import Motion, solve_motion
-from knucklepath.viewer.commands.arguments import require_reached, whole_file
 from knucklepath.viewer.exports.studio import Studio
+from knucklepath.viewer.exports.writing import whole_file
 from knucklepath.viewer.project import Project
+from knucklepath.viewer.reach import require_reached
 
 Array: TypeAlias = NDArray[np.float64]
 

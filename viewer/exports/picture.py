@@ -9,9 +9,10 @@ from typing import Any
 
 from knucklepath.kinematics.errors import KnucklepathError
 from knucklepath.kinematics.motion import solve_motion
-from knucklepath.viewer.commands.arguments import require_reached, whole_file
 from knucklepath.viewer.exports.studio import Studio
+from knucklepath.viewer.exports.writing import whole_file
 from knucklepath.viewer.project import Project
+from knucklepath.viewer.reach import require_reached
 
 
 def write_picture(

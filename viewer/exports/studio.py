@@ -33,6 +33,8 @@ Array: TypeAlias = NDArray[np.float64]
 
 #: Frames are drawn this much larger and brought down, which smooths every edge; very large ones as they are.
 TIMES, MOST_DRAWN_PX = 2, 8192
+#: Nobody waits for a file as for a window: it is drawn from whole meshes up to this many triangles.
+MOST_TRIANGLES = 500_000
 #: Spacing of the path's poses, mm of travel: ticks fall on poses.
 PATH_STEP_MM = 2.0
 #: Readings that a picture shows, with their digits, unit as written, and widest number.
@@ -117,6 +119,7 @@ class Studio:
                 overlays=overlays,
                 theme=self._theme,
                 pixel_ratio=self._times * type_scale(*size),
+                most_triangles=MOST_TRIANGLES,
             )
             # drawn large and brought down, edges are smooth already
             self.scene.renderer.SetUseFXAA(self._times == 1)

@@ -8,10 +8,19 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from knucklepath.kinematics.clearance import primitives
-from knucklepath.kinematics.clearance.inside import is_closed, one_vertex_of_each_piece, wholly_inside, winding_number
+from knucklepath.kinematics.clearance.inside import (
+    is_closed,
+    one_vertex_of_each_piece,
+    wholly_inside,
+    winding_number,
+    without_repeats,
+)
 from knucklepath.kinematics.clearance.solids import RodStyle, generated_solids
-from knucklepath.kinematics.mechanism import Layout
-from knucklepath.kinematics.wheel import Corner, Wheel
+from knucklepath.kinematics.mechanism import HingedBody, Layout, Mechanism, PointInput, Rod
+from knucklepath.kinematics.wheel import Corner, Spring, Wheel
+from knucklepath.plugins.layouts.semi_trailing_arm import LAYOUT as SEMI_TRAILING
+
+HUB_WHEEL = Wheel(SEMI_TRAILING.example["wheel.centre"], 280.0, camber_deg=-2.0)
 
 coordinate = st.floats(-200.0, 200.0, allow_nan=False)
 point = st.tuples(coordinate, coordinate, coordinate).map(np.array)
@@ -41,6 +50,62 @@ def test_a_ball_encloses_the_round_ball() -> None:
     planes = np.einsum("ij,ij->i", normal, a - [5.0, -3.0, 2.0])
     assert planes.min() >= 30.0 - 1e-9
     assert np.linalg.norm(vertices - [5.0, -3.0, 2.0], axis=1).max() < 30.0 * 1.03
+
+
+def volume_of(mesh: primitives.Mesh) -> float:
+    return primitives.signed_volume(*mesh)
+
+
+def test_a_tube_is_a_polygon_about_its_outside_and_one_within_its_bore() -> None:
+    tube = primitives.tube((1.0, 2.0, 3.0), (1.0, 2.0, 103.0), 20.0, 12.0, 24)
+    # areas of regular polygons: n r² tan(π/n) about a circle, n r² sin(π/n) cos(π/n) within it
+    turn = np.pi / 24
+    area = 24 * (20.0**2 * np.tan(turn) - 12.0**2 * np.sin(turn) * np.cos(turn))
+    assert volume_of(tube) == pytest.approx(100.0 * area, rel=1e-9)
+
+
+def test_volumes_come_near_those_of_the_round_solids() -> None:
+    ball = 4.0 / 3.0 * np.pi * 30.0**3
+    assert ball < volume_of(primitives.ball((5.0, -3.0, 2.0), 30.0, 24)) < 1.04 * ball
+    # a coil is a bent bar: section times length of the centre line (Pappus), less than its polygons leave out
+    coil = np.pi * 6.0**2 * np.hypot(2.0 * np.pi * 7.0 * 40.0, 188.0)
+    assert 0.93 * coil < volume_of(primitives.coil(200.0, 40.0, 6.0)) < coil
+
+
+def inside_by(points: np.ndarray, mesh: primitives.Mesh) -> np.ndarray:
+    """Winding numbers of points that lie a hair within the round solid."""
+    return np.array([winding_number(point, *mesh) for point in points])
+
+
+def about_y(along: float, radius: float) -> np.ndarray:
+    """Points (n, 3) around the y axis: over corners, sides and in between of a 72-sided polygon."""
+    angles = np.linspace(0.0, 2.0 * np.pi / 72, 9)
+    return np.column_stack((radius * np.cos(angles), np.full(9, along), radius * np.sin(angles)))
+
+
+def test_a_tyre_encloses_its_round_shoulders_its_tread_and_its_bore() -> None:
+    outer, width, inner, hair = 300.0, 200.0, 170.0, 1e-6
+    tyre = primitives.tyre_ring((0.0, 0.0, 0.0), (0.0, 1.0, 0.0), outer, width, inner)
+    shoulder = min(0.42 * (outer - inner), 0.36 * width / 2.0)
+    for angle in np.radians(np.arange(0.0, 90.1, 2.5)):
+        along = width / 2.0 - shoulder + (shoulder - hair) * np.cos(angle)
+        radius = outer - shoulder + (shoulder - hair) * np.sin(angle)
+        for side in (along, -along):
+            assert inside_by(about_y(side, radius), tyre).min() == pytest.approx(1.0, abs=1e-6)
+    assert inside_by(about_y(0.0, outer - hair), tyre).min() == pytest.approx(1.0, abs=1e-6)
+    assert inside_by(about_y(0.0, inner + hair), tyre).min() == pytest.approx(1.0, abs=1e-6)
+
+
+def test_a_bore_never_looks_wider_than_it_is() -> None:
+    """What hangs inside a rim, a caliper say, must not be told more room than there is."""
+    radius, width = 160.0, 180.0
+    rim = primitives.rim_barrel((0.0, 0.0, 0.0), (0.0, 1.0, 0.0), radius, width)
+    bore = radius - 1.6 * max(0.03 * radius, 4.0)
+    assert inside_by(about_y(-60.0, bore + 1e-6), rim).min() == pytest.approx(1.0, abs=1e-6)
+    assert inside_by(about_y(-60.0, bore * np.cos(np.pi / 72) - 1e-6), rim).max() == pytest.approx(0.0, abs=1e-6)
+    tube = primitives.tube((0.0, 0.0, 0.0), (0.0, 100.0, 0.0), 60.0, 50.0, 72)
+    assert inside_by(about_y(50.0, 50.0 + 1e-6), tube).min() == pytest.approx(1.0, abs=1e-6)
+    assert inside_by(about_y(50.0, 60.0 - 1e-6), tube).min() == pytest.approx(1.0, abs=1e-6)
 
 
 def test_a_tyre_keeps_its_outer_sizes_and_stays_within_the_stated_fatness() -> None:
@@ -87,6 +152,65 @@ def test_a_rod_that_is_not_shown_is_not_made(layout: Layout) -> None:
     assert hidden not in {solid.name for solid in solids}
 
 
+def reaches(mesh: primitives.Mesh, point: np.ndarray, within: float) -> bool:
+    return bool(np.linalg.norm(mesh[0] - point, axis=1).min() < within)
+
+
+def test_the_carrier_reaches_the_spring_that_stands_on_it(layout: Layout) -> None:
+    mechanism = layout.mechanism(layout.example, steered=layout.steers)
+    wheel = Wheel(layout.example["wheel.centre"], 280.0)
+    moving = wheel.centre + [70.0, -120.0, 90.0]
+    spring = Spring(moving + [0.0, -60.0, 250.0], moving, layout.carrier)
+    bare, sprung = (
+        next(
+            solid
+            for solid in generated_solids(Corner(mechanism, wheel, layout.carrier, spring=spring), RodStyle())
+            if solid.name == layout.carrier
+        )
+        for spring in (None, spring)
+    )
+    assert reaches((sprung.vertices, sprung.faces), moving, 20.0)
+    assert not reaches((bare.vertices, bare.faces), moving, 20.0)
+
+
+def test_a_hinged_carrier_has_a_hub_on_the_spin_axis() -> None:
+    arm = next(
+        solid
+        for solid in generated_solids(
+            Corner(SEMI_TRAILING.mechanism(SEMI_TRAILING.example, steered=False), HUB_WHEEL, SEMI_TRAILING.carrier),
+            RodStyle(20.0),
+        )
+        if solid.name == SEMI_TRAILING.carrier
+    )
+    end = HUB_WHEEL.centre + 7.5 * HUB_WHEEL.spin_axis
+    assert winding_number(end, arm.vertices, arm.faces) > 0.5
+    across = np.cross(HUB_WHEEL.spin_axis, [0.0, 0.0, 1.0])
+    assert winding_number(end + 33.0 * across / np.linalg.norm(across), arm.vertices, arm.faces) > 0.5
+
+
+def test_a_joint_in_the_very_place_of_a_hinge_point_is_no_trouble() -> None:
+    """A plugin may hold a rod to an arm at the arm's own pivot: that leg has no length and is left out."""
+    points = {
+        "arm.front": np.array([100.0, 300.0, 100.0]),
+        "arm.rear": np.array([-100.0, 300.0, 100.0]),
+        "drop.top": np.array([100.0, 300.0, 100.0]),
+        "drop.bottom": np.array([100.0, 200.0, -100.0]),
+        "wheel.centre": np.array([0.0, 600.0, 200.0]),
+    }
+    mechanism = Mechanism(
+        bodies=(HingedBody("arm", ("arm.front", "arm.rear")),),
+        joints=(Rod("drop", "arm", "drop.top", "chassis", "drop.bottom"),),
+        inputs=(PointInput("travel", "arm", "wheel.centre"),),
+        points=points,
+    )
+    corner = Corner(mechanism, Wheel(points["wheel.centre"], 280.0), "arm")
+    with np.errstate(all="raise"):
+        solids = generated_solids(corner, RodStyle())
+    arm = next(solid for solid in solids if solid.name == "arm")
+    assert np.isfinite(arm.vertices).all()
+    assert is_closed(arm.vertices, arm.faces)
+
+
 def test_pieces_are_told_apart_and_each_can_lie_inside() -> None:
     outer = primitives.ball((0.0, 0.0, 0.0), 100.0)
     inner = primitives.ball((20.0, 0.0, 0.0), 10.0)
@@ -96,6 +220,22 @@ def test_pieces_are_told_apart_and_each_can_lie_inside() -> None:
     assert wholly_inside(*both, *outer)
     assert not wholly_inside(*beside, *outer)
     assert not wholly_inside(*outer, *inner)
+
+
+def test_being_inside_does_not_depend_on_the_winding_of_the_outer_mesh() -> None:
+    vertices, faces = primitives.ball((0.0, 0.0, 0.0), 100.0)
+    inner = primitives.ball((20.0, 0.0, 0.0), 10.0)
+    assert wholly_inside(*inner, vertices, faces[:, ::-1])
+    assert not wholly_inside(*primitives.ball((80.0, 80.0, 80.0), 10.0), vertices, faces[:, ::-1])
+
+
+def test_triangles_listed_again_are_dropped_but_not_those_turned_round() -> None:
+    vertices, faces = primitives.ball((0.0, 0.0, 0.0), 100.0)
+    again = np.concatenate((faces, faces[:7][:, [1, 2, 0]]))
+    assert not is_closed(vertices, again)
+    np.testing.assert_array_equal(without_repeats(vertices, again), faces)
+    turned = np.concatenate((faces, faces[:, ::-1]))
+    assert len(without_repeats(vertices, turned)) == 2 * len(faces)
 
 
 def test_an_open_mesh_is_known_as_open() -> None:

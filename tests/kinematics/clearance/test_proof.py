@@ -224,11 +224,36 @@ def test_a_part_wholly_inside_another_is_touching_and_an_open_mesh_is_said_to_be
     core = Solid("core", "knuckle", *ball(hub, 10.0))
     vertices, faces = ball(hub, 500.0)
     shell, opened = Solid("shell", "chassis", vertices, faces), Solid("opened", "chassis", vertices, faces[1:])
-    first, second = proved_gaps(corner, [Pair(shell, core, 1.0), Pair(opened, core, 1.0)], (-50.0, 60.0), (-30.0, 30.0))
-    assert (first.verdict, first.gap_mm) == ("touching", 0.0)
-    assert "wholly inside" in first.note
-    assert second.verdict == "clear"
-    assert "open mesh" in second.note
+    halved = Solid("halved", "chassis", vertices, faces[: len(faces) // 2])
+    repeated = Solid("repeated", "chassis", vertices, np.concatenate((faces, faces[:3])))
+    pairs = [Pair(solid, core, 1.0) for solid in (shell, opened, halved, repeated)]
+    gaps = {gap.between[0]: gap for gap in proved_gaps(corner, pairs, (-50.0, 60.0), (-30.0, 30.0))}
+    for name in ("shell", "opened", "repeated"):
+        assert (gaps[name].verdict, gaps[name].gap_mm) == ("touching", 0.0)
+        assert "wholly inside" in gaps[name].note
+    assert gaps["halved"].verdict == "undecided", "half a shell does not tell inside from outside"
+    assert "open mesh" in gaps["halved"].note
+    assert gaps["halved"].proven_gap_mm == pytest.approx(gaps["halved"].gap_mm, abs=0.06)
+
+
+def test_an_open_mesh_beside_another_part_is_still_proven_clear(corner: Corner) -> None:
+    """A mesh with a hole winds hardly at all about what lies well outside it."""
+    vertices, faces = ball(corner.wheel.centre, 30.0)
+    far = Solid("far", "chassis", *ball(corner.wheel.centre + [0.0, -200.0, 0.0], 20.0))
+    (gap,) = proved_gaps(corner, [Pair(Solid("hub", "knuckle", vertices, faces[2:]), far, 5.0)], (-50.0, 60.0))
+    assert gap.verdict == "clear"
+    assert "open mesh" in gap.note
+
+
+def test_relief_counts_in_the_sampled_search_as_well(corner: Corner) -> None:
+    joint = corner.point("lower_arm.ball_joint")
+    arm = Solid("arm", "lower_arm", *cylinder(joint + [0.0, -150.0, 0.0], joint, 10.0))
+    upright = Solid("upright", "knuckle", *cylinder(joint, joint + [0.0, 0.0, 120.0], 10.0))
+    pairs = pairs_to_check(corner, (arm, upright), (ClearanceRule("arm", "upright", 2.0, 25.0),))
+    (sampled,) = sampled_gaps(solve_motion(corner, np.linspace(-30.0, 30.0, 7)[:, None], [[0.0]]), pairs)
+    (proven,) = proved_gaps(corner, pairs, (-30.0, 30.0))
+    assert sampled.gap_mm == pytest.approx(proven.gap_mm, abs=0.06)
+    assert "is ignored" in sampled.note
 
 
 def test_a_layout_without_a_rack_is_proven_along_its_one_input() -> None:

@@ -11,11 +11,12 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from manifold3d import Manifold, Mesh
 
+from knucklepath.kinematics.clearance.contact import nearest_on_triangle
 from knucklepath.kinematics.clearance.pairs import Pair, PairError, pairs_to_check
 from knucklepath.kinematics.clearance.primitives import ball, cylinder, lathe, merged
 from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.clearance.solids import RodStyle, Solid, generated_solids
-from knucklepath.kinematics.errors import MeshError
+from knucklepath.kinematics.errors import MeshError, ReachError
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel
 from knucklepath.plugins.layouts.double_a_arm import LAYOUT
@@ -26,6 +27,7 @@ class Rule:
     a: str
     b: str
     gap: float
+    relief: float = 0.0
 
 
 @pytest.fixture(scope="module")
@@ -69,6 +71,18 @@ def test_the_gap_is_no_larger_than_that_of_any_pose_of_the_grid(corner: Corner, 
         assert found.gap_mm <= smallest + 1e-9
         assert found.gap_mm > smallest - 3.0
         assert np.linalg.norm(found.point_a_mm - found.point_b_mm) == pytest.approx(found.gap_mm, abs=1e-9)
+
+
+def test_many_pairs_at_once_give_what_each_gives_alone_in_any_order(corner: Corner, motion: Motion) -> None:
+    """A part that moved in one pair stands still in the next; nothing of the one may be left in the other."""
+    pairs = pairs_to_check(corner, generated_solids(corner, RodStyle()), ())
+    assert {pair.a.name for pair in pairs} & {pair.b.name for pair in pairs}
+    alone = {pair.a.name + pair.b.name: sampled_gaps(motion, [pair])[0] for pair in pairs}
+    for order in (pairs, pairs[::-1]):
+        for gap in sampled_gaps(motion, order):
+            expected = alone["".join(gap.between)]
+            assert gap.gap_mm == expected.gap_mm
+            assert (gap.travel_mm, gap.rack_mm) == (expected.travel_mm, expected.rack_mm)
 
 
 def test_the_points_lie_on_both_parts_at_the_pose(corner: Corner, motion: Motion) -> None:
@@ -130,6 +144,121 @@ def test_a_part_wholly_inside_another_is_touching(corner: Corner, motion: Motion
     assert gap.verdict == "touching"
     assert gap.gap_mm == 0.0
     assert "core lies wholly inside shell" in gap.note
+
+
+@pytest.mark.parametrize("flaw", ["none", "inside out", "repeated triangles", "sliver"])
+def test_flaws_of_a_closed_mesh_do_not_hide_what_is_inside_it(flaw: str, corner: Corner, motion: Motion) -> None:
+    hub = corner.wheel.centre
+    vertices, faces = box((-600.0, -600.0, -600.0), (600.0, 600.0, 600.0))
+    vertices = vertices + hub
+    if flaw == "inside out":
+        faces = faces[:, ::-1]
+    elif flaw == "repeated triangles":
+        faces = np.concatenate((faces, faces[:3], faces[:1]))
+    elif flaw == "sliver":
+        # an edge is split on one side, and a triangle without area joins its halves to the other side
+        a, b, c = faces[0]
+        middle = len(vertices)
+        vertices = np.concatenate((vertices, [(vertices[a] + vertices[b]) / 2.0]))
+        faces = np.concatenate((faces[1:], [[a, middle, c], [middle, b, c], [middle, a, b]]))
+    shell = Solid("shell", "chassis", vertices, faces.astype(np.int32))
+    core = Solid("core", "knuckle", *ball(hub, 20.0))
+    for pair in (Pair(shell, core, 1.0), Pair(core, shell, 1.0)):
+        (gap,) = sampled_gaps(motion, [pair])
+        assert (gap.verdict, gap.gap_mm) == ("touching", 0.0)
+        assert gap.note == "core lies wholly inside shell."
+
+
+def pin_and_block(corner: Corner, low: float, high: float) -> tuple[tuple[np.ndarray, np.ndarray], ...]:
+    """A small ball at the wheel centre, and a block of the chassis from ``low`` to ``high`` above it."""
+    hub = corner.wheel.centre
+    block = box((-300.0, -300.0, low), (300.0, 300.0, high))
+    return ball(hub, 1.0), (block[0] + hub, block[1])
+
+
+def test_a_piece_inside_at_some_sampled_poses_is_found_though_another_piece_comes_nearer(corner: Corner) -> None:
+    """The ball steps over the block's surface from one pose to the next, and is farther from it than the feelers."""
+    motion = solve_motion(corner, np.linspace(-50.0, 60.0, 23)[:, None], np.zeros((1, 1)))
+    pin, block = pin_and_block(corner, 12.3, 32.3)
+    at = corner.wheel.centre + [200.0, 0.0, -300.0]
+    lowest = motion.point("wheel", at)[0, 0]
+    moving = Solid("moving", "wheel", *merged([pin, ball(at, 5.0)]))
+    fixed = Solid("fixed", "chassis", *merged([block, ball(lowest - [0.0, 0.0, 11.0], 5.0)]))
+    assert min(abs(motion.travel_mm - 12.3).min(), abs(motion.travel_mm - 32.3).min()) > 2.0
+    (gap,) = sampled_gaps(motion, [Pair(fixed, moving, 0.1)])
+    assert gap.verdict == "touching"
+    assert 12.3 < gap.travel_mm < 32.3
+    assert "moving lies wholly inside fixed" in gap.note
+    (below,) = sampled_gaps(motion[:12], [Pair(fixed, moving, 0.1)])
+    assert below.verdict == "undecided"
+    assert 0.1 < below.gap_mm < 1.0
+
+
+def test_sharpening_that_steps_through_a_surface_knows_that_it_is_inside(corner: Corner) -> None:
+    """From travel 5, 6 mm below the block, the first step that comes nearer to its surface is within it."""
+    motion = solve_motion(corner, np.array([[-50.0], [5.0], [60.0]]), np.zeros((1, 1)))
+    pin, block = pin_and_block(corner, 12.3, 45.0)
+    (gap,) = sampled_gaps(motion, [Pair(Solid("block", "chassis", *block), Solid("pin", "wheel", *pin), 0.1)])
+    assert gap.verdict == "touching"
+    assert gap.note == "pin lies wholly inside block."
+    assert 13.3 < gap.travel_mm < 44.0
+
+
+@pytest.mark.parametrize("seed", range(12))
+def test_the_point_of_touching_parts_lies_on_both(seed: int, corner: Corner, motion: Motion) -> None:
+    place = np.random.default_rng(seed)
+    hub = corner.wheel.centre
+    reach = place.normal(size=(2, 3)) * 60.0
+    bars = [cylinder(hub - way, hub + way + place.normal(size=3) * 10.0, 25.0) for way in reach]
+    a, b = Solid("a", "chassis", *bars[0]), Solid("b", "wheel", *bars[1])
+    (gap,) = sampled_gaps(motion, [Pair(a, b, 1.0)])
+    assert gap.verdict == "touching"
+    np.testing.assert_array_equal(gap.point_a_mm, gap.point_b_mm)
+    pose = solve_motion(corner, gap.travel_mm, gap.rack_mm)
+    for solid in (a, b):
+        moved = solid.vertices @ pose.rotation(solid.body).T + pose.translation(solid.body)
+        triangles = moved[solid.faces]
+        nearest = min(
+            float(np.linalg.norm(nearest_on_triangle(gap.point_a_mm, triangle) - gap.point_a_mm))
+            for triangle in triangles
+        )
+        assert nearest < 1e-9
+
+
+def test_the_same_part_twice_touches_itself(corner: Corner, motion: Motion) -> None:
+    part = ball(corner.wheel.centre, 20.0)
+    (gap,) = sampled_gaps(motion, [Pair(Solid("one", "wheel", *part), Solid("two", "knuckle", *part), 1.0)])
+    assert (gap.verdict, gap.gap_mm, gap.rack_mm) == ("touching", 0.0, 0.0)
+    assert abs(gap.travel_mm) == np.abs(motion.travel_mm).min()
+
+
+def test_the_pose_reported_is_a_local_minimum(corner: Corner, motion: Motion) -> None:
+    """No pose near it brings the parts nearer by the tolerance, whichever way one goes."""
+    solids = {solid.name: solid for solid in generated_solids(corner, RodStyle())}
+    for name in ("lower_arm", "tie_rod"):
+        (gap,) = sampled_gaps(motion, [Pair(solids["tyre"], solids[name], 5.0)], tolerance_mm=0.05)
+        tyre, other = (fcl_model(solids[key].vertices, solids[key].faces) for key in ("tyre", name))
+        turns = np.linspace(0.0, 2.0 * np.pi, 16, endpoint=False)
+        for reach in (0.2, 1.0):
+            travel = np.clip(gap.travel_mm + reach * np.cos(turns), -50.0, 60.0)
+            rack = np.clip(gap.rack_mm + reach * np.sin(turns), -30.0, 30.0)
+            near = solve_motion(corner, travel, rack)
+            for k in range(len(turns)):
+                for item, body in ((tyre, "wheel"), (other, name)):
+                    item.setTransform(fcl.Transform(near.rotation(body)[k], near.translation(body)[k]))
+                value = fcl.distance(tyre, other, fcl.DistanceRequest(), fcl.DistanceResult())
+                assert value > gap.gap_mm - 0.05
+
+
+def test_a_motion_that_cannot_be_reached_at_all_is_said_to_be_so(corner: Corner) -> None:
+    locked = solve_motion(corner, [[900.0], [950.0]], [[0.0]])
+    assert not locked.reached.any()
+    solids = {solid.name: solid for solid in generated_solids(corner, RodStyle())}
+    with pytest.raises(ReachError, match="none of the 2 poses"):
+        sampled_gaps(locked, [Pair(solids["tyre"], solids["lower_arm"], 5.0)])
+    half = solve_motion(corner, [[0.0], [900.0]], [[0.0]])
+    (gap,) = sampled_gaps(half, [Pair(solids["tyre"], solids["lower_arm"], 5.0)])
+    assert np.isfinite(gap.gap_mm)
 
 
 def test_an_open_mesh_is_measured_and_said_to_be_open(corner: Corner, motion: Motion) -> None:
