@@ -1,4 +1,4 @@
-"""Make README's pictures again: ``python assets/make_readme_pictures.py``. Geometry is the layouts' invented example."""
+"""Make README's pictures again: ``python assets/make_readme_pictures.py``. The geometry is invented."""
 
 from __future__ import annotations
 
@@ -54,7 +54,8 @@ def missed_by_a_grid() -> None:
     text = (
         f"dots: poses of a 61 × 41 grid;\nthe smallest gap at any of its\n2,501 poses is {coarse.min():.2f} mm,\n"
         f"so {pair.required_mm:g} mm seem kept\n\n"
-        f"cross: the touch that the proof\nfound, in {gap.evaluations} evaluations,\nat travel {gap.travel_mm:+.2f} mm,\n"
+        f"cross: the touch that the proof\nfound, in {gap.evaluations} evaluations,\n"
+        f"at travel {gap.travel_mm:+.2f} mm,\n"
         f"rack {gap.rack_mm:+.2f} mm\n\nshaded: gap below {pair.required_mm:g} mm"
     )
     figure.text(0.63, 0.82, text.replace("-", "−"), fontsize=12, color=ink, va="top", linespacing=1.5)

@@ -17,12 +17,14 @@ from knucklepath.kinematics.clearance.pairs import PairError, pairs_to_check
 from knucklepath.kinematics.clearance.solids import RodStyle, Solid
 from knucklepath.kinematics.errors import MechanismError, ProjectError
 from knucklepath.kinematics.following import solve
+from knucklepath.kinematics.limits import DriveShaft, JointLimit, joint_bodies
 from knucklepath.kinematics.mechanism import CHASSIS, COINCIDENT_MM, WHEEL_CENTRE, Layout, Mechanism
 from knucklepath.kinematics.motion import lock_reason, solve_motion
 from knucklepath.kinematics.wheel import Corner, Spring, Vehicle, Wheel
 from knucklepath.viewer.parts import body_of
 from knucklepath.viewer.plausible import check_corner_size, check_lengths, check_wheel_size
 from knucklepath.viewer.source import Source, dotted, one_line, printable
+from knucklepath.viewer.toml_lines import KeyPath
 
 Array = NDArray[np.float64]
 
@@ -200,6 +202,48 @@ def build_rules(
             raise source.error(path, one_line(str(error))) from error
         rules.append(rule)
     return tuple(rules)
+
+
+def build_joint_limits(source: Source, given: Sequence[Mapping[str, Any]], corner: Corner) -> tuple[JointLimit, ...]:
+    """Joint limits, each of a joint that is there.
+
+    Raises
+    ------
+    ProjectError : an unknown joint, or an axis without direction.
+    """
+    limits = []
+    for position, entry in enumerate(given):
+        try:
+            joint_bodies(corner.mechanism, entry["joint"])
+        except MechanismError as error:
+            raise source.error(("joint_limits", position, "joint"), one_line(error.message)) from error
+        axis = _direction(source, ("joint_limits", position, "axis"), entry["axis"], "[0.0, 0.0, 1.0]")
+        limits.append(JointLimit(entry["joint"], axis, entry["greatest_deg"]))
+    return tuple(limits)
+
+
+def build_drive_shaft(source: Source, given: Mapping[str, Any]) -> DriveShaft:
+    """The drive shaft.
+
+    Raises
+    ------
+    ProjectError : its ends are one point, or its axis has no direction.
+    """
+    inner, outer = np.asarray(given["inner"]), np.asarray(given["outer"])
+    if np.linalg.norm(outer - inner) <= COINCIDENT_MM:
+        raise source.error(("drive_shaft", "outer"), "is the same point as inner; a shaft needs a length")
+    example = "[0.0, 1.0, 0.0]"
+    axis = _direction(source, ("drive_shaft", "inner_axis"), given.get("inner_axis", (0.0, 1.0, 0.0)), example)
+    rest = {key: value for key, value in given.items() if key.startswith("greatest")}
+    return DriveShaft(inner, outer, axis, **rest)
+
+
+def _direction(source: Source, path: KeyPath, given: Sequence[float], example: str) -> Array:
+    axis = np.asarray(given, dtype=float)
+    length = float(np.linalg.norm(axis))
+    if length < NO_DIRECTION:
+        raise source.error(path, f"has no direction; write for example {example}")
+    return axis / length
 
 
 def build_loads(source: Source, given: Sequence[Mapping[str, Any]]) -> tuple[LoadCase, ...]:

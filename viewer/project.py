@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 from knucklepath.kinematics.clearance.solids import RodStyle, Solid
 from knucklepath.kinematics.errors import MeshError
+from knucklepath.kinematics.limits import DriveShaft, JointLimit
 from knucklepath.kinematics.mechanism import Layout
 from knucklepath.kinematics.wheel import Corner
 from knucklepath.viewer import permissions
@@ -19,6 +20,8 @@ from knucklepath.viewer.build import (
     ClearanceRule,
     LoadCase,
     build_corner,
+    build_drive_shaft,
+    build_joint_limits,
     build_loads,
     build_rods,
     build_rules,
@@ -69,6 +72,8 @@ class Project:
     rods: RodStyle = field(default_factory=RodStyle)
     clearances: tuple[ClearanceRule, ...] = ()
     loads: tuple[LoadCase, ...] = ()
+    joint_limits: tuple[JointLimit, ...] = ()
+    drive_shaft: DriveShaft | None = None
     unused_keys: tuple[str, ...] = ()
 
     def solids(self) -> tuple[Solid, ...]:
@@ -117,6 +122,8 @@ def load_project(path: str | Path, registry: Registry | None = None, allow_plugi
         rods=rods,
         clearances=clearances,
         loads=loads,
+        joint_limits=build_joint_limits(source, values.get("joint_limits", ()), corner),
+        drive_shaft=build_drive_shaft(source, values["drive_shaft"]) if "drive_shaft" in values else None,
         unused_keys=unused_keys(source.data, NOT_USED_YET),
     )
 

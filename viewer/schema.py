@@ -90,6 +90,27 @@ CLEARANCES = Tables(
     )
 )
 
+JOINT_LIMITS = Tables(
+    Table(
+        {
+            "joint": Text('"lower_arm.ball_joint"', required=True),
+            "axis": Vector("[0.0, 0.0, 1.0]", required=True, length=False),
+            "greatest_deg": Number("25.0", required=True, over=0.0, most=180.0),
+        }
+    )
+)
+
+DRIVE_SHAFT = Table(
+    {
+        "inner": Vector("[0.0, 180.0, 250.0]", required=True),
+        "outer": Vector("[0.0, 640.0, 270.0]", required=True),
+        "inner_axis": Vector("[0.0, 1.0, 0.0]", length=False),
+        "greatest_inner_deg": Number("22.0", over=0.0, most=90.0),
+        "greatest_outer_deg": Number("45.0", over=0.0, most=90.0),
+        "greatest_plunge": Number("20.0", length=True, over=0.0),
+    }
+)
+
 LOADS = Tables(
     Table(
         {
@@ -117,16 +138,16 @@ TOP_KEYS = (
     "vehicle",
     "parts",
     "clearances",
+    "joint_limits",
+    "drive_shaft",
     "loads",
 )
 
 #: Arrays of tables: several entries of one kind.
-SEVERAL = ("parts", "clearances", "loads")
+SEVERAL = ("parts", "clearances", "joint_limits", "loads")
 
 #: Keys that are read and checked, whose results come with a later command.
 NOT_USED_YET = (
-    ("spring", "shortest"),
-    ("spring", "longest"),
     ("spring", "rate_n_per_mm"),
     ("spring", "preload_n"),
     ("loads",),
@@ -150,6 +171,8 @@ def project_schema(layout: Layout) -> Table:
         "vehicle": VEHICLE,
         "parts": PARTS,
         "clearances": CLEARANCES,
+        "joint_limits": JOINT_LIMITS,
+        "drive_shaft": DRIVE_SHAFT,
         "loads": LOADS,
     }
     return Table(entries)

@@ -5,12 +5,14 @@ from __future__ import annotations
 import argparse
 import sys
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from knucklepath.kinematics.clearance.gap import ASSUMPTIONS, SAMPLED, Gap, worst_first
 from knucklepath.kinematics.clearance.pairs import Pair, pairs_to_check
 from knucklepath.kinematics.clearance.sampled import sampled_gaps
+from knucklepath.kinematics.limits import LimitResult, check_limits
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.viewer import CAUTION
 from knucklepath.viewer.commands.arguments import UsageError, note, number, open_project
@@ -20,6 +22,9 @@ from knucklepath.viewer.exports.tables import figure
 from knucklepath.viewer.exports.writing import write_text
 from knucklepath.viewer.project import ClearanceRule, Project
 from knucklepath.viewer.reach import explain_limit
+
+if TYPE_CHECKING:
+    from rich.table import Table
 
 #: Poses that tell where the mechanism locks, and at which distances are sampled where they cannot be proven.
 GRID = (23, 15)
@@ -44,10 +49,11 @@ def run(options: argparse.Namespace) -> int:
     if not pairs:
         note("no pair to check: every two parts are joined, or stand on the same body")
     gaps, method, stopped = _check(project, motion, pairs, tolerance)
+    limits = [] if options.pair is not None or stopped else _limits(project, motion)
     if options.json:
-        write_text(options.json, gaps_json(motion, gaps, tolerance, method))
+        write_text(options.json, gaps_json(motion, gaps, limits, tolerance, method))
     if options.json != "-":
-        _show(project, gaps, method)
+        _show(project, gaps, limits, method)
     if options.map and gaps:
         _map(project, options.map, gaps[0], pairs)
     if stopped:
@@ -56,7 +62,13 @@ def run(options: argparse.Namespace) -> int:
     if not motion.reached.all():
         print(f"knucklepath clearance: {explain_limit(motion)}", file=sys.stderr)
         return 1
-    return int(any(gap.verdict != "clear" for gap in gaps))
+    return int(any(gap.verdict != "clear" for gap in gaps) or not all(limit.ok for limit in limits))
+
+
+def _limits(project: Project, motion: Motion) -> list[LimitResult]:
+    """Joint angles, spring stroke, drive shaft and lock-up over the same motion."""
+    travel, rack = ((float(axis.min()), float(axis.max())) for axis in (motion.travel_mm, motion.rack_mm))
+    return check_limits(project.corner, travel, rack, project.joint_limits, project.drive_shaft)
 
 
 def _check(project: Project, motion: Motion, pairs: Sequence[Pair], tolerance: float) -> tuple[list[Gap], str, bool]:
@@ -100,7 +112,7 @@ def _one_pair(text: str, project: Project) -> tuple[ClearanceRule, ...]:
     return (ClearanceRule(a, b, max(asked, default=0.0), max(relief, default=0.0)),)
 
 
-def _show(project: Project, gaps: Sequence[Gap], method: str) -> None:
+def _show(project: Project, gaps: Sequence[Gap], limits: Sequence[LimitResult], method: str) -> None:
     from rich.console import Console
     from rich.markup import escape
     from rich.table import Table
@@ -126,7 +138,35 @@ def _show(project: Project, gaps: Sequence[Gap], method: str) -> None:
             pose_text(project, gap),
         )
     console.print(table)
+    if limits:
+        console.print(_limit_table(project, limits))
     console.print(ASSUMPTIONS if method == "proven" else SAMPLED, highlight=False)
     for text in dict.fromkeys(gap.note for gap in gaps if gap.note):
         console.print(text, highlight=False, markup=False)
     console.print(CAUTION, style="italic", highlight=False)
+
+
+def _limit_table(project: Project, limits: Sequence[LimitResult]) -> Table:
+    from rich.markup import escape
+    from rich.table import Table
+
+    table = Table(box=None, header_style="bold", padding=(0, 1))
+    for heading, justify in (
+        ("limit", "left"),
+        ("", "left"),
+        ("extreme", "right"),
+        ("allowed", "right"),
+        ("at", "left"),
+    ):
+        table.add_column(heading, justify=justify)  # type: ignore[arg-type]
+    for limit in limits:
+        word = "kept" if limit.ok else "[bold]passed[/bold]"
+        sign = "≤" if limit.kind == "at most" else "≥"
+        table.add_row(
+            escape(limit.name),
+            word,
+            f"{figure(limit.extreme, 'mm')} {limit.unit}",
+            f"{sign} {figure(limit.limit, 'mm')} {limit.unit}",
+            pose_text(project, limit) if "lock-up" not in limit.name else escape(limit.note),
+        )
+    return table

@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import json
 from collections.abc import Sequence
+from dataclasses import asdict
 from typing import Any
 
 from knucklepath.kinematics.clearance.gap import ASSUMPTIONS, SAMPLED, Gap
+from knucklepath.kinematics.limits import LimitResult
 from knucklepath.kinematics.motion import Motion
 from knucklepath.viewer import CAUTION
 from knucklepath.viewer.exports.tables import figure
 from knucklepath.viewer.project import Project
 
 
-def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float, method: str) -> str:
+def gaps_json(
+    motion: Motion, gaps: Sequence[Gap], limits: Sequence[LimitResult], tolerance_mm: float, method: str
+) -> str:
     """The result as JSON text, worst pair first; ``method`` is "proven" or "sampled"."""
     travel, rack = motion.travel_mm, motion.rack_mm
     result: dict[str, Any] = {
@@ -26,6 +30,7 @@ def gaps_json(motion: Motion, gaps: Sequence[Gap], tolerance_mm: float, method: 
         "assumes": ASSUMPTIONS if method == "proven" else SAMPLED,
         "caution": CAUTION,
         "pairs": [_pair(gap) for gap in gaps],
+        "limits": [asdict(limit) for limit in limits],
     }
     return json.dumps(result, indent=1, allow_nan=False) + "\n"
 
@@ -48,8 +53,8 @@ def _pair(gap: Gap) -> dict[str, Any]:
     return pair
 
 
-def pose_text(project: Project, gap: Gap) -> str:
-    """The pose of a gap in words: "travel +60.0 mm, rack −35.0 mm"."""
+def pose_text(project: Project, gap: Gap | LimitResult) -> str:
+    """The pose of a gap or limit in words: "travel +60.0 mm, rack −35.0 mm"."""
     text = f"travel {_signed(gap.travel_mm)} mm"
     return f"{text}, rack {_signed(gap.rack_mm)} mm" if project.corner.steered else text
 
