@@ -36,3 +36,12 @@ def test_pixels_stay_in_the_viewer() -> None:
         for path in (ROOT / room).rglob("*.py"):
             for line in path.read_text().splitlines():
                 assert not line.strip().startswith(("import pyvista", "from pyvista", "import vtk", "from vtk"))
+
+
+def test_nothing_compiled_needs_what_is_not_installed_with_the_program() -> None:
+    """numba's linear algebra needs scipy, which only the tests have."""
+    for room in ROOMS[:3]:
+        for path in (ROOT / room).rglob("*.py"):
+            text = path.read_text()
+            if "import compiled" in text:
+                assert "np.linalg" not in text.split("@compiled", 1)[-1], path.relative_to(ROOT)

@@ -47,6 +47,36 @@ def build_tree(vertices: Array, faces: NDArray[np.int32]) -> BoxTree:
 
 
 @compiled
+def principal_axes(matrix):
+    """Eigenvectors (columns) of a symmetric (3, 3) matrix by Jacobi's rotations; any orthonormal frame if it is zero.
+
+    Own, because numba's needs scipy, which nothing else here does.
+    """
+    work, vectors = matrix.copy(), np.eye(3)
+    for _ in range(24):
+        size = abs(work[0, 0]) + abs(work[1, 1]) + abs(work[2, 2])
+        if abs(work[0, 1]) + abs(work[0, 2]) + abs(work[1, 2]) <= 1e-15 * size:
+            break
+        for p in range(2):
+            for q in range(p + 1, 3):
+                if abs(work[p, q]) <= 1e-300:
+                    continue
+                slope = (work[q, q] - work[p, p]) / (2.0 * work[p, q])
+                tangent = (1.0 if slope >= 0.0 else -1.0) / (abs(slope) + np.sqrt(slope * slope + 1.0))
+                cosine = 1.0 / np.sqrt(tangent * tangent + 1.0)
+                sine = tangent * cosine
+                for k in range(3):
+                    one, two = work[k, p], work[k, q]
+                    work[k, p], work[k, q] = cosine * one - sine * two, sine * one + cosine * two
+                for k in range(3):
+                    one, two = work[p, k], work[q, k]
+                    work[p, k], work[q, k] = cosine * one - sine * two, sine * one + cosine * two
+                    one, two = vectors[k, p], vectors[k, q]
+                    vectors[k, p], vectors[k, q] = cosine * one - sine * two, sine * one + cosine * two
+    return vectors
+
+
+@compiled
 def _build(corners):
     total = len(corners)
     most = 2 * total + 1
@@ -93,11 +123,10 @@ def _build(corners):
         spread[1, 0] = spread[0, 1]
         spread[2, 0] = spread[0, 2]
         spread[2, 1] = spread[1, 2]
-        _, vectors = np.linalg.eigh(spread)
-        # the axis of the widest spread first
+        vectors = principal_axes(spread)
         for k in range(3):
             for j in range(3):
-                axes[node, k, j] = vectors[j, 2 - k]
+                axes[node, k, j] = vectors[j, k]
         if size == 1:
             # a triangle's own box lies along its longest edge
             t = order[first]

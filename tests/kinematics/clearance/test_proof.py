@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
-from knucklepath.kinematics.clearance.boxes import build_tree
+from knucklepath.kinematics.clearance.boxes import build_tree, principal_axes
 from knucklepath.kinematics.clearance.gap import relative_poses
 from knucklepath.kinematics.clearance.grid import gap_grid
 from knucklepath.kinematics.clearance.pairs import Pair, PairError, pairs_to_check
@@ -93,6 +93,19 @@ def test_distances_with_degenerate_triangles_equal_brute_force_over_points(seed:
     apart = np.linalg.norm(spread[0][:, None] - (spread[1] + shift)[None, ::3], axis=2).min()
     assert value <= apart + 1e-9
     assert np.isfinite(value)
+
+
+@settings(max_examples=40, deadline=None)
+@given(st.integers(0, 2**32 - 1))
+def test_principal_axes_equal_lapack(seed: int) -> None:
+    random = np.random.default_rng(seed)
+    points = random.normal(size=(7, 3)) * 10.0 ** random.uniform(-6.0, 3.0, 3)
+    matrix = points.T @ points
+    axes = principal_axes(matrix)
+    np.testing.assert_allclose(axes.T @ axes, np.eye(3), atol=1e-12)
+    turned = axes.T @ matrix @ axes
+    np.testing.assert_allclose(np.sort(np.diag(turned)), np.linalg.eigvalsh(matrix), atol=1e-12 * np.trace(matrix))
+    np.testing.assert_array_equal(principal_axes(np.zeros((3, 3))), np.eye(3))
 
 
 def test_a_limit_stops_the_search_without_changing_what_is_below_it() -> None:
