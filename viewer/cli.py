@@ -34,6 +34,7 @@ commands:
   picture     one picture (PNG) of a pose
   movie       the motion as GIF, or as MP4 with the extra 'movie'
   clearance   smallest gaps between parts, proven over the whole motion
+  envelope    the volume that a part sweeps, as a mesh
   layouts     installed layouts and the points they need
   doctor      what this machine can draw, and what to install if it cannot
 
@@ -175,6 +176,18 @@ def _parser() -> _Parser:
 
     clearance.add_argument("--map", metavar="OUT.png", help="draw the gap of the worst pair over travel and rack")
 
+    envelope = _command(
+        commands,
+        "envelope",
+        "The volume that a part sweeps over the whole motion, as a watertight mesh that contains every pose.",
+        "knucklepath envelope my-axle tyre-sweep.stl --part tyre\n"
+        "knucklepath envelope my-axle sweep.stl --part tyre --on lower_arm --margin 3",
+    )
+    envelope.add_argument("out", metavar="OUT.stl", help="mesh to write, mm, body frame")
+    envelope.add_argument("--part", metavar="NAME", required=True, help="part, rod or arm, 'tyre' or 'rim'")
+    envelope.add_argument("--on", metavar="BODY", default="chassis", help="as seen from this body (default chassis)")
+    envelope.add_argument("--margin", metavar="MM", default="1.0", help="added all around, at least (default 1.0)")
+
     layouts = _command(
         commands,
         "layouts",
@@ -195,7 +208,7 @@ def _parser() -> _Parser:
 
 
 #: Options whose value may begin with a minus sign: joined to it before parsing.
-SIGNED_OPTIONS = ("--travel", "--rack", "--look", "--tolerance", "--seconds")
+SIGNED_OPTIONS = ("--travel", "--rack", "--look", "--tolerance", "--seconds", "--margin")
 
 
 def join_signed_values(arguments: Sequence[str]) -> list[str]:

@@ -17,9 +17,10 @@ from knucklepath.kinematics.errors import KnucklepathError, ProjectError
 from knucklepath.kinematics.mechanism import CHASSIS, WHEEL_CENTRE, HingedBody, Layout, SlidingBody
 from knucklepath.kinematics.motion import solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel
+from knucklepath.viewer.exports.stl import binary_stl
 from knucklepath.viewer.project import load_project
 from knucklepath.viewer.source import dotted
-from knucklepath.viewer.starter_parts import StarterPart, binary_stl, starter_parts
+from knucklepath.viewer.starter_parts import StarterPart, starter_parts
 
 if TYPE_CHECKING:
     from knucklepath.plugins.registry import Registry
@@ -28,6 +29,8 @@ Array = NDArray[np.float64]
 
 #: The project file's name.
 FILE = "axle.toml"
+#: What the headers of its meshes say.
+MESH_TITLE = "invented part of a knucklepath starter project, mm"
 #: Proportions over the loaded radius: free radius, tyre width, rim diameter, rods.
 FREE_SHARE, WIDTH_SHARE, RIM_SHARE, ROD_SHARE = 1.02, 0.62, 1.30, 0.07
 #: Bump, rebound and rack over the loaded radius: the first that the layout's example can do is taken.
@@ -103,7 +106,7 @@ def _write(folder: Path, layout: Layout) -> None:
     parts = starter_parts(numbers.corner, numbers.rods)
     (folder / "parts").mkdir()
     for part in parts:
-        (folder / "parts" / part.file).write_bytes(binary_stl(part.mesh))
+        (folder / "parts" / part.file).write_bytes(binary_stl(part.mesh, MESH_TITLE))
     (folder / FILE).write_text(_text_of(layout, numbers, parts), encoding="utf-8", newline="\n")
 
 

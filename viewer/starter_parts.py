@@ -115,15 +115,3 @@ def _bushes(corner: Corner, body: HingedBody, thickness: float) -> list[Mesh]:
 
 def _leg(a: Array, b: Array, radius: float) -> list[Mesh]:
     return [cylinder(a, b, radius, 20)] if np.linalg.norm(b - a) > LEAST_LEG else []
-
-
-def binary_stl(mesh: Mesh) -> bytes:
-    """A mesh as binary STL: an 80-byte header, the count, and 50 bytes a triangle."""
-    vertices, faces = mesh
-    corners = vertices[faces]
-    normals = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
-    normals /= np.maximum(np.linalg.norm(normals, axis=1, keepdims=True), np.finfo(float).tiny)
-    rows = np.zeros(len(faces), dtype=[("normal", "<f4", 3), ("corners", "<f4", (3, 3)), ("attribute", "<u2")])
-    rows["normal"], rows["corners"] = normals, corners
-    header = b"invented part of a knucklepath starter project, mm".ljust(80)
-    return header + len(faces).to_bytes(4, "little") + rows.tobytes()

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from knucklepath.kinematics.clearance.primitives import cylinder, tyre_ring
-from knucklepath.viewer.starter_parts import binary_stl
+from knucklepath.viewer.exports.stl import binary_stl
 
 FULL_PROJECT = """\
 title  = "Gravel-hill single-seater, front axle"

@@ -16,8 +16,8 @@ from knucklepath.kinematics.errors import ProjectError
 from knucklepath.kinematics.mechanism import Layout
 from knucklepath.kinematics.motion import solve_motion
 from knucklepath.plugins.registry import Registry
+from knucklepath.viewer.exports.stl import binary_stl
 from knucklepath.viewer.project import load_project
-from knucklepath.viewer.starter_parts import binary_stl
 from knucklepath.viewer.toml_lines import find_lines
 
 
