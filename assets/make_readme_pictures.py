@@ -26,7 +26,7 @@ TRAVEL, RACK = (-50.0, 60.0), (-30.0, 30.0)
 
 def missed_by_a_grid() -> None:
     """Two balls of 0.2 mm that meet at one spot; the grid's poses around it, and what the proof found."""
-    corner = Corner(LAYOUT.mechanism(LAYOUT.example), Wheel(LAYOUT.example["wheel.centre"], 280.0))
+    corner = Corner(LAYOUT.mechanism(LAYOUT.example), Wheel(np.array(LAYOUT.example["wheel.centre"]), 280.0))
     spot = (TRAVEL[0] + 30.5 * 110.0 / 60.0, RACK[0] + 12.5 * 60.0 / 40.0)
     tip = corner.wheel.centre + np.array([210.0, -60.0, 130.0])
     met = solve_motion(corner, *spot).point("wheel", tip)
