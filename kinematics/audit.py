@@ -71,8 +71,11 @@ def audit(mechanism: Mechanism) -> Mobility:
 
     Raises
     ------
-    MechanismError : naming the body that is still free and the motion it has, or the joint that is surplus.
+    MechanismError : naming the body that is still free and the motion it has, or the joint that is surplus; or the
+        points carry geometry variants.
     """
+    if mechanism.is_batched:
+        raise MechanismError("the audit takes one geometry at a time, not variants")
     counted = mobility(mechanism)
     closure = Closure(mechanism)
     square = closure.scaled_jacobian(closure.tree.design(1))

@@ -53,6 +53,18 @@ class Evaluation:
 
 
 @dataclass(frozen=True)
+class Workspace:
+    """The large arrays of Newton's method, one piece of memory that all its steps write over.
+
+    residual (equations, B); jacobian (equations, columns, B); elimination (equations, unknowns + right sides, B).
+    """
+
+    residual: Array
+    jacobian: Array
+    elimination: Array
+
+
+@dataclass(frozen=True)
 class Corrected:
     """What Newton made of a start.
 
@@ -70,6 +82,16 @@ class Corrected:
     def converged(self) -> NDArray[np.bool_]:
         """(B,) poses whose every joint closes."""
         return np.asarray(self.error <= ACCEPTED_RESIDUAL)
+
+    def take(self, index: NDArray[np.intp]) -> Corrected:
+        """Return some of the poses, or one of them several times."""
+        return Corrected(
+            self.state.take(index),
+            self.error[index],
+            self.determinant[index],
+            self.rates[..., index],
+            self.moved[index],
+        )
 
 
 class Closure:
@@ -97,7 +119,7 @@ class Closure:
             at += 1
         self.equations = at
         self._size = self._typical_size()
-        self._frames_of = {joint.name: _cross_axes(joint, self.tree.points) for joint in mechanism.joints}
+        self._design_of = {joint.name: _design_constants(joint, self.tree.points) for joint in mechanism.joints}
 
     def _typical_size(self) -> float:
         if not self.tree.points:
@@ -105,21 +127,28 @@ class Closure:
         first = np.stack([point[:, 0] for point in self.tree.points.values()])
         return float(max(np.ptp(first, axis=0).max() / 4.0, 1e-9))
 
+    @property
+    def _design(self) -> State:
+        return self.tree.design(int(np.prod(self.shape)) if self.mechanism.is_batched else 1)
+
+    @cached_property
+    def _at_design(self) -> Evaluation:
+        return self.evaluate(self._design, {})
+
     @cached_property
     def order(self) -> PivotOrder:
         """Elimination order, from the design position."""
-        evaluation = self.evaluate(self.tree.design(self._design_count), {})
-        return pivot_order(evaluation.jacobian[:, : self.tree.unknowns, 0])
-
-    @property
-    def _design_count(self) -> int:
-        return int(np.prod(self.shape)) if self.mechanism.is_batched else 1
+        return pivot_order(self._at_design.jacobian[:, : self.tree.unknowns, 0])
 
     @cached_property
-    def design_sign(self) -> Array:
-        """Sign of the Jacobian's determinant at the design position: the branch, (1,) or (B,)."""
-        evaluation = self.evaluate(self.tree.design(self._design_count), {})
-        return np.sign(self._solve(evaluation)[1])
+    def at_design(self) -> Corrected:
+        """The design position, where every joint is closed: one pose, or one of each geometry variant.
+
+        The sign of its determinant tells the mechanism's branch.
+        """
+        state, evaluation = self._design, self._at_design
+        rates, determinant = self._solve(evaluation, self._input_columns(evaluation))
+        return Corrected(state, evaluation.error, determinant, rates, np.zeros(state.count))
 
     def for_poses(self, index: NDArray[np.intp]) -> Closure:
         """The same equations for some of the poses; only geometry variants make a difference."""
@@ -127,7 +156,7 @@ class Closure:
             return self
         some = object.__new__(Closure)
         some.__dict__.update(self.__dict__)
-        some.__dict__["design_sign"] = self.design_sign[index]
+        some.__dict__["at_design"] = self.at_design.take(index)
         some.__dict__["order"] = self.order
         some.tree = object.__new__(Tree)
         some.tree.__dict__.update(self.tree.__dict__)
@@ -148,25 +177,35 @@ class Closure:
             )
             for name, link in self.tree.links.items()
         }
-        some._frames_of = {name: tuple(pick(axis) for axis in axes) for name, axes in self._frames_of.items()}
+        some._design_of = {name: tuple(pick(axis) for axis in axes) for name, axes in self._design_of.items()}
         return some
 
-    def evaluate(self, state: State, inputs: Mapping[str, Array]) -> Evaluation:
+    def _workspace(self, count: int) -> Workspace:
+        right = max(1, len(self.input_names))
+        widths = (1, self.tree.columns, self.tree.unknowns + right)
+        whole = np.empty((sum(widths), self.equations, count))
+        parts = np.split(whole, np.cumsum(widths)[:-1])
+        residual, jacobian, elimination = (part.reshape(self.equations, len(part), count) for part in parts)
+        return Workspace(residual[:, 0], jacobian, elimination)
+
+    def evaluate(self, state: State, inputs: Mapping[str, Array], space: Workspace | None = None) -> Evaluation:
         """Residuals and Jacobian at a state.
 
-        ``inputs`` maps input names to (B,) values; inputs left out are at their design value, 0.
+        ``inputs`` maps input names to (B,) values; inputs left out are at their design value, 0. With ``space``, the
+        result's arrays lie in it and hold until it is used again.
         """
-        tree, count = self.tree, state.count
+        tree = self.tree
         frames = tree.frames(state)
-        residual = np.empty((self.equations, count))
-        jacobian = np.zeros((self.equations, tree.columns, count))
+        space = space or self._workspace(state.count)
+        residual, jacobian = space.residual, space.jacobian
+        jacobian[:] = 0.0
         for joint in self.mechanism.joints:
             self._joint(joint, frames, residual, jacobian)
         for item in self._point_inputs:
             row = self.rows[f"input {item.name}"].start
             design = tree.points[item.point]
             now = frames[item.body].locate(design)
-            along = np.asarray(item.direction, dtype=float)[:, None]
+            along = (np.asarray(item.direction, dtype=float) / np.linalg.norm(item.direction))[:, None]
             residual[row] = dot_first(along, now - design) - inputs.get(item.name, 0.0)
             self._push_along(jacobian, row, item.body, frames, now, along, 1.0)
         return Evaluation(residual, jacobian, frames)
@@ -175,11 +214,8 @@ class Closure:
         points, start = self.tree.points, self.rows[joint.name].start
         a, b = frames[joint.body_a], frames[joint.body_b]
         if isinstance(joint, Rod):
-            design_a, design_b = points[joint.point_a], points[joint.point_b]
-            at_a, at_b = a.locate(design_a), b.locate(design_b)
-            apart, was = at_a - at_b, design_a - design_b
-            squared = dot_first(was, was)
-            length = np.sqrt(squared)
+            at_a, at_b = a.locate(points[joint.point_a]), b.locate(points[joint.point_b])
+            apart, (length, squared) = at_a - at_b, self._design_of[joint.name]
             # (|d|² − L²)/2L instead of |d| − L: smooth, no root, and equal to first order.
             residual[start] = (dot_first(apart, apart) - squared) / (2.0 * length)
             along = apart / length
@@ -190,10 +226,11 @@ class Closure:
         at_a, at_b = a.locate(at), b.locate(at)
         if isinstance(joint, PointOnLine):
             on_line = b.locate(points[joint.line[0]])
-            for row, axis in enumerate(self._frames_of[joint.name], start):
+            for row, axis in enumerate(self._design_of[joint.name], start):
                 across = b.turn(axis)
                 apart = at_a - on_line
-                residual[row] = dot_first(across, apart)
+                # less what the point is off the line at design, a hair: that position is closed whatever its digits
+                residual[row] = dot_first(across, apart) - dot_first(axis, at - points[joint.line[0]])
                 self._push_along(jacobian, row, joint.body_a, frames, at_a, across, 1.0)
                 self._push_along(jacobian, row, joint.body_b, frames, on_line, across, -1.0)
                 self._push_turn(jacobian, row, joint.body_b, frames, cross_first(across, apart))
@@ -203,7 +240,7 @@ class Closure:
         self._push_point(jacobian, start, joint.body_b, frames, at_b, -1.0)
         if isinstance(joint, Ball):
             return
-        for row, (of_a, of_b) in enumerate(_pairs(self._frames_of[joint.name], joint), start + 3):
+        for row, (of_a, of_b) in enumerate(_pairs(self._design_of[joint.name], joint), start + 3):
             turned_a, turned_b = a.turn(of_a), b.turn(of_b)
             residual[row] = self._size * dot_first(turned_a, turned_b)
             moment = self._size * cross_first(turned_a, turned_b)
@@ -274,32 +311,40 @@ class Closure:
                 right[self.rows[f"input {item.name}"], k] = 1.0
         return right
 
-    def _solve(self, evaluation: Evaluation) -> tuple[Array, Array]:
-        """Rates (unknowns, inputs, B) and determinants (B,)."""
+    def _solve(self, evaluation: Evaluation, right: Array, space: Workspace | None = None) -> tuple[Array, Array]:
+        """Solve with the Jacobian for right sides (equations, k, B): solutions (unknowns, k, B), determinants (B,)."""
         square = evaluation.jacobian[:, : self.tree.unknowns]
-        return solve_many(square, self._input_columns(evaluation), self.order)
+        return solve_many(square, right, self.order, None if space is None else space.elimination)
 
-    def correct(self, state: State, inputs: Mapping[str, Array], most_steps: int = MOST_STEPS) -> Corrected:
+    def correct(
+        self,
+        state: State,
+        inputs: Mapping[str, Array],
+        most_steps: int = MOST_STEPS,
+        sought: float = SOUGHT_RESIDUAL,
+    ) -> Corrected:
         """Newton from ``state`` with the inputs held at ``inputs`` (name → (B,)).
 
-        Poses that have converged are left alone while the others go on. Never raises: look at ``converged``.
+        Poses that are within ``sought`` (mm) are left alone while the others go on. Never raises: look at
+        ``converged``.
         """
         tree = self.tree
         state = tree.with_driven(state, inputs) if tree.driven else state
-        evaluation = self.evaluate(state, inputs)
+        space = self._workspace(state.count)
+        evaluation = self.evaluate(state, inputs, space)
         moved = np.zeros((tree.unknowns, state.count))
         for _ in range(most_steps):
-            open_poses = ~(evaluation.error <= SOUGHT_RESIDUAL)
+            open_poses = ~(evaluation.error <= sought)
             if not open_poses.any():
                 break
-            step = solve_many(evaluation.jacobian[:, : tree.unknowns], -evaluation.residual[:, None], self.order)[0]
+            step = self._solve(evaluation, -evaluation.residual[:, None], space)[0]
             step = np.where(open_poses & np.isfinite(step[:, 0]).all(axis=0), step[:, 0], 0.0)
             if not step.any():
                 break
             moved += step
             state = tree.advance(state, step)
-            evaluation = self.evaluate(state, inputs)
-        rates, determinant = self._solve(evaluation)
+            evaluation = self.evaluate(state, inputs, space)
+        rates, determinant = self._solve(evaluation, self._input_columns(evaluation), space)
         return Corrected(state, evaluation.error, determinant, rates, self.size_of(moved))
 
     def size_of(self, step: Array) -> Array:
@@ -313,11 +358,16 @@ class Closure:
         return np.asarray(jacobian / self.tree.scale[: self.tree.unknowns])
 
 
-def _cross_axes(joint: Joint, points: Mapping[str, Array]) -> tuple[Array, ...]:
-    """Design-position directions that a joint's turning equations compare.
+def _design_constants(joint: Joint, points: Mapping[str, Array]) -> tuple[Array, ...]:
+    """What a joint's equations compare with, from the design position.
 
-    Point on line: two directions across the line. Hinge: the axis and two across it. Fixed: x, y, z.
+    Rod: its length and length squared, (1 or B,). Point on line: two directions across the line. Hinge: the axis and
+    two across it. Fixed: x, y, z.
     """
+    if isinstance(joint, Rod):
+        apart = points[joint.point_a] - points[joint.point_b]
+        squared = dot_first(apart, apart)
+        return (np.sqrt(squared), squared)
     if isinstance(joint, Fixed):
         return tuple(np.eye(3)[:, [i]] for i in range(3))
     if isinstance(joint, Hinge | PointOnLine):

@@ -6,7 +6,7 @@ never changes its branch (the sign of the Jacobian's determinant).
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -14,9 +14,9 @@ from numpy.typing import ArrayLike, NDArray
 
 from knucklepath.kinematics.closure import ACCEPTED_RESIDUAL, SOUGHT_RESIDUAL, Closure, Corrected
 from knucklepath.kinematics.errors import MechanismError
-from knucklepath.kinematics.frames import rotation_from_vector, rotation_vector
+from knucklepath.kinematics.frames import rotation_vector
 from knucklepath.kinematics.mechanism import Mechanism
-from knucklepath.kinematics.tree import State
+from knucklepath.kinematics.tree import State, exponential_first
 
 Array = NDArray[np.float64]
 
@@ -29,7 +29,10 @@ SMALLEST_STEP = 2e-3
 #: Grids of more poses than this start from a polynomial through a coarse grid; smaller ones follow directly.
 COARSE_FROM = 120
 #: Nodes per input of the coarse grid: enough for starts that one Newton step finishes.
-COARSE_NODES = 7
+COARSE_NODES = 9
+NODE_ANGLES = np.pi * (np.arange(COARSE_NODES) + 0.5) / COARSE_NODES
+#: The coarse grid's own residual, mm: Newton squares the error of a start, so that no more is to be gained.
+COARSE_RESIDUAL = 5e-5
 #: Steps of path following, at most; a path needs about five, one that ends at a lock-up about sixty.
 MOST_PATH_STEPS = 400
 #: A step along a free curve is trusted when it is corrected by no more than this share of its length …
@@ -88,7 +91,7 @@ def solve(mechanism: Mechanism, inputs: Mapping[str, ArrayLike]) -> Solution:
         if name not in known:
             raise MechanismError(f"there is no input '{name}'; inputs: {', '.join(known) or 'none'}")
     values = {name: np.asarray(inputs.get(name, 0.0), dtype=float) for name in known}
-    leading = [point.shape[:-1] for point in mechanism.points.values()]
+    leading = {point.shape[:-1] for point in mechanism.points.values()}
     shape = np.broadcast_shapes(*leading, *(value.shape for value in values.values()))
     flat = {name: np.ascontiguousarray(np.broadcast_to(value, shape).reshape(-1)) for name, value in values.items()}
     closure = Closure(mechanism, shape)
@@ -100,22 +103,19 @@ def solve(mechanism: Mechanism, inputs: Mapping[str, ArrayLike]) -> Solution:
     count = int(np.prod(shape))
     finite = np.all([np.isfinite(value) for value in flat.values()], axis=0) if flat else np.ones(count, bool)
     if count > COARSE_FROM and not mechanism.is_batched and finite.all():
-        return _through_coarse(closure, shape, flat)
+        return _through_coarse(closure, shape, flat, values)
     return _from_design(closure, shape, flat)
 
 
 def _from_design(closure: Closure, shape: tuple[int, ...], inputs: Mapping[str, Array]) -> Solution:
     count = int(np.prod(shape))
-    start = closure.tree.design(count)
-    zero = {name: np.zeros(count) for name in inputs}
-    corrected, share = follow(closure, start, zero, inputs)
+    corrected, share = _follow_from_design(closure, np.arange(count), inputs)
     return _solution(closure, shape, inputs, corrected, share)
 
 
 def _solution(
     closure: Closure, shape: tuple[int, ...], inputs: Mapping[str, Array], corrected: Corrected, share: Array
 ) -> Solution:
-    design = closure.correct(closure.tree.design(closure._design_count), {}, 0)
     return Solution(
         closure=closure,
         shape=shape,
@@ -124,32 +124,33 @@ def _solution(
         reached=np.asarray((share >= 1.0) & corrected.converged),
         share=share,
         error=corrected.error,
-        determinant=np.asarray(corrected.determinant / design.determinant),
+        determinant=np.asarray(corrected.determinant / closure.at_design.determinant),
         rates=corrected.rates,
     )
 
 
-def _through_coarse(closure: Closure, shape: tuple[int, ...], inputs: Mapping[str, Array]) -> Solution:
-    """Follow paths to a coarse grid only; start Newton everywhere else from the polynomial through it."""
-    nodes, varying = _chebyshev_nodes(inputs)
-    coarse, share = follow(
-        closure,
-        closure.tree.design(len(next(iter(nodes.values())))),
-        {name: np.zeros_like(value) for name, value in nodes.items()},
-        nodes,
-    )
+def _through_coarse(
+    closure: Closure, shape: tuple[int, ...], inputs: Mapping[str, Array], values: Mapping[str, Array]
+) -> Solution:
+    """Follow paths to a coarse grid only; start Newton everywhere else from the polynomial through it.
+
+    ``values`` are the inputs before they were broadcast to ``shape`` and flattened.
+    """
+    spans = {name: (float(value.min()), float(value.max())) for name, value in inputs.items()}
+    mesh = np.meshgrid(*(_chebyshev_nodes(*span) for span in spans.values()), indexing="ij")
+    nodes = {name: axis.reshape(-1) for name, axis in zip(spans, mesh, strict=True)}
+    coarse, share = _follow_from_design(closure, np.arange(mesh[0].size), nodes, COARSE_RESIDUAL)
     if not (share >= 1.0).all():
         return _from_design(closure, shape, inputs)
-    state = _interpolate(closure, nodes, varying, coarse.state, inputs)
+    weights = [_node_weights(values[name], *span) for name, span in spans.items()]
+    state = _interpolate(coarse.state, mesh[0].shape, shape, weights)
     corrected = closure.correct(state, inputs)
-    sound = corrected.converged & (np.sign(corrected.determinant) == closure.design_sign)
+    sound = corrected.converged & (np.sign(corrected.determinant) == np.sign(closure.at_design.determinant))
     sound &= corrected.moved < 1.0
     share = np.ones(state.count)
     if not sound.all():
         bad = np.flatnonzero(~sound)
-        target = {name: value[bad] for name, value in inputs.items()}
-        zero = {name: np.zeros(len(bad)) for name in inputs}
-        redone, share_bad = follow(closure, closure.tree.design(len(bad)), zero, target)
+        redone, share_bad = _follow_from_design(closure, bad, {name: value[bad] for name, value in inputs.items()})
         corrected.state.put(bad, redone.state)
         corrected.error[bad], corrected.determinant[bad] = redone.error, redone.determinant
         corrected.rates[..., bad] = redone.rates
@@ -157,68 +158,48 @@ def _through_coarse(closure: Closure, shape: tuple[int, ...], inputs: Mapping[st
     return _solution(closure, shape, inputs, corrected, share)
 
 
-def _chebyshev_nodes(inputs: Mapping[str, Array]) -> tuple[dict[str, Array], tuple[str, ...]]:
-    """A tensor grid of Chebyshev nodes over the inputs' ranges, flattened; and which inputs vary."""
-    lines: dict[str, Array] = {}
-    angles = np.pi * (np.arange(COARSE_NODES) + 0.5) / COARSE_NODES
-    for name, value in inputs.items():
-        low, high = float(value.min()), float(value.max())
-        if high > low:
-            lines[name] = 0.5 * (low + high) + 0.5 * (high - low) * np.cos(angles)
-        else:
-            lines[name] = np.array([low])
-    mesh = np.meshgrid(*lines.values(), indexing="ij")
-    nodes = {name: axis.reshape(-1) for name, axis in zip(lines, mesh, strict=True)}
-    return nodes, tuple(name for name, line in lines.items() if len(line) > 1)
+def _chebyshev_nodes(low: float, high: float) -> Array:
+    """Chebyshev nodes between two values; one node where there is nothing between them."""
+    if not high > low:
+        return np.array([low])
+    return 0.5 * (low + high) + 0.5 * (high - low) * np.cos(NODE_ANGLES)
 
 
-def _interpolate(
-    closure: Closure,
-    nodes: Mapping[str, Array],
-    varying: tuple[str, ...],
-    coarse: State,
-    inputs: Mapping[str, Array],
-) -> State:
-    """Polynomial through the coarse grid's coordinates, evaluated at every pose.
+def _node_weights(value: Array, low: float, high: float) -> Array:
+    """How much each Chebyshev node counts in the polynomial's value at ``value`` (...): (nodes, ...).
 
-    Evaluated along each distinct value of an input, so a tensor grid costs no more than its lines.
+    From the discrete orthogonality of the Chebyshev polynomials at their nodes: Σₖ (2 − δₖ₀)/n Tₖ(node) Tₖ(value).
     """
-    tree = closure.tree
-    vectors = rotation_vector(np.moveaxis(coarse.turns, -1, 1))
-    known = np.concatenate(
-        (
-            np.moveaxis(vectors, -1, 1).reshape(3 * len(coarse.turns), coarse.count),
-            coarse.places.reshape(3 * len(coarse.places), coarse.count),
-            coarse.scalars,
-        )
-    )
-    columns = []
-    fits = []
-    for name in varying:
-        low, high = float(inputs[name].min()), float(inputs[name].max())
-        columns.append(_chebyshev_basis(inputs[name], low, high))
-        fits.append(_chebyshev_basis(nodes[name], low, high))
-    basis, fit = columns[0], fits[0]
-    for column, fitted in zip(columns[1:], fits[1:], strict=True):
-        basis = (basis[:, None] * column[None]).reshape(-1, basis.shape[-1])
-        fit = (fit[:, None] * fitted[None]).reshape(-1, fit.shape[-1])
-    guess = np.linalg.solve(fit.T, known.T).T @ basis
-    free = len(coarse.turns)
-    turned = guess[: 3 * free].reshape(free, 3, guess.shape[-1])
-    turns = np.moveaxis(rotation_from_vector(np.moveaxis(turned, 1, -1)), 1, -1)
-    places = guess[3 * free : 6 * free].reshape(free, 3, guess.shape[-1])
-    state = State(np.ascontiguousarray(turns), np.ascontiguousarray(places), guess[6 * free :].copy())
-    return tree.with_driven(state, inputs) if tree.driven else state
-
-
-def _chebyshev_basis(value: Array, low: float, high: float) -> Array:
-    """Chebyshev polynomials T₀… at ``value`` scaled to −1…1, (COARSE_NODES, count)."""
-    x = (2.0 * value - (low + high)) / (high - low)
-    basis = np.ones((COARSE_NODES, len(x)))
+    if not high > low:
+        return np.ones((1, *value.shape))
+    x = ((value - low) - (high - value)) / (high - low)
+    basis = np.ones((COARSE_NODES, *x.shape))
     basis[1] = x
     for k in range(2, COARSE_NODES):
         basis[k] = 2.0 * x * basis[k - 1] - basis[k - 2]
-    return basis
+    basis[0] *= 0.5
+    at_nodes = 2.0 / COARSE_NODES * np.cos(np.outer(NODE_ANGLES, np.arange(COARSE_NODES)))
+    return np.asarray(np.einsum("nk,k...->n...", at_nodes, basis))
+
+
+def _interpolate(coarse: State, nodes: tuple[int, ...], shape: tuple[int, ...], weights: Iterable[Array]) -> State:
+    """Polynomial through the coordinates at a tensor grid of ``nodes``, evaluated at poses of ``shape``.
+
+    One input after the other, each along its own axes only: a tensor grid of poses costs little more than its lines.
+    """
+    free, count = len(coarse.turns), coarse.count
+    vectors = np.moveaxis(rotation_vector(np.moveaxis(coarse.turns, -1, 1)), -1, 1)
+    known = (vectors.reshape(3 * free, count), coarse.places.reshape(3 * free, count), coarse.scalars)
+    guess = np.concatenate(known).reshape(-1, *nodes, *(1 for _ in shape))
+    for weight in weights:
+        total = guess[:, 0] * weight[0]
+        for k in range(1, len(weight)):
+            total += guess[:, k] * weight[k]
+        guess = total
+    guess = np.broadcast_to(guess, (len(guess), *shape)).reshape(len(guess), -1)
+    turned, places = guess[: 6 * free].reshape(2, free, 3, guess.shape[-1])
+    turns = np.array([exponential_first(vector) for vector in turned]).reshape(free, 3, 3, guess.shape[-1])
+    return State(turns, places.copy(), guess[6 * free :].copy())
 
 
 def follow(
@@ -239,13 +220,28 @@ def follow(
     Corrected at the farthest pose reached on each path, and the share (B,) of the path that this is: 1 where
     the end is reached, less where the mechanism locks or would change its branch.
     """
-    count = start.count
+    return _follow(closure, closure.correct(start, begin), begin, end, SOUGHT_RESIDUAL)
+
+
+def _follow_from_design(
+    closure: Closure, poses: NDArray[np.intp], end: Mapping[str, Array], sought: float = SOUGHT_RESIDUAL
+) -> tuple[Corrected, Array]:
+    """As ``follow``, from the design position; ``poses`` tell the geometry variants where there are any."""
+    start = closure.at_design.take(poses if closure.mechanism.is_batched else np.zeros_like(poses))
+    return _follow(closure.for_poses(poses), start, {name: np.zeros(len(poses)) for name in end}, end, sought)
+
+
+@np.errstate(over="ignore", invalid="ignore")  # inputs of 1e200 mm are out of reach, and no more than that
+def _follow(
+    closure: Closure, done: Corrected, begin: Mapping[str, Array], end: Mapping[str, Array], sought: float
+) -> tuple[Corrected, Array]:
+    """Follow from ``done``, the poses at ``begin``; closing joints to ``sought`` (mm) on the way."""
+    count = done.state.count
     # An input that turns a body is weighted with what it moves, so that every length here is in mm.
     driven = dict(zip(closure.tree.driven, closure.tree.scale[closure.tree.unknowns :], strict=True))
     length = np.maximum.reduce(
         [np.zeros(count), *(driven.get(name, 1.0) * np.abs(end[name] - begin[name]) for name in end)]
     )
-    done = closure.correct(start, begin)
     state = done.state.copy()
     error, determinant = done.error.copy(), done.determinant.copy()
     rates, moved = done.rates.copy(), done.moved.copy()
@@ -253,7 +249,7 @@ def follow(
     share[length == 0.0] = 1.0
     usable = np.isfinite(length) & done.converged
     share = np.where(usable, share, 0.0)
-    sign = np.broadcast_to(closure.design_sign, (count,))
+    sign = np.broadcast_to(np.sign(closure.at_design.determinant), (count,))
     for _ in range(MOST_PATH_STEPS):
         active = np.flatnonzero(usable & (share < 1.0))
         if not len(active):
@@ -266,11 +262,12 @@ def follow(
         for k, name in enumerate(closure.input_names):
             tangent += rates[:, k, active] * change[name]
         predicted = closure.tree.advance(state.take(active), tangent)
-        tried = some.correct(predicted, target, 6)
+        tried = some.correct(predicted, target, 6, sought)
         # The driven bodies' own motion counts: where the others turn back, their tangent alone is almost nothing.
         stride = np.linalg.norm([closure.size_of(tangent), *(driven[name] * change[name] for name in driven)], axis=0)
         trusted = tried.moved <= TRUSTED_SHARE * stride + TRUSTED_MM
-        good = tried.converged & (np.sign(tried.determinant) == sign[active]) & trusted
+        closed = tried.error <= max(sought, ACCEPTED_RESIDUAL)
+        good = closed & (np.sign(tried.determinant) == sign[active]) & trusted
         index = active[good]
         state.put(index, tried.state.take(good))
         error[index], determinant[index] = tried.error[good], tried.determinant[good]

@@ -52,7 +52,7 @@ def pivot_order(matrix: Array) -> PivotOrder:
     return PivotOrder(rows, columns, sign, pivots)
 
 
-def solve_many(matrix: Array, right: Array, order: PivotOrder) -> tuple[Array, Array]:
+def solve_many(matrix: Array, right: Array, order: PivotOrder, work: Array | None = None) -> tuple[Array, Array]:
     """Solve B systems of n equations for k right-hand sides.
 
     Parameters
@@ -60,15 +60,17 @@ def solve_many(matrix: Array, right: Array, order: PivotOrder) -> tuple[Array, A
     matrix : (n, n, B).
     right : (n, k, B).
     order : pivot order of a typical matrix.
+    work : (n, n + k or more, B) to work in, contents lost; made anew where not given.
 
     Returns
     -------
     solutions (n, k, B) — nan where a system is singular — and determinants (B,).
     """
     n, k = right.shape[:2]
-    work = np.empty((n, n + k, matrix.shape[-1]))
+    work = np.empty((n, n + k, matrix.shape[-1])) if work is None else work[:, : n + k]
     for target, row in enumerate(order.rows):
-        np.take(matrix[row], order.columns, axis=0, out=work[target, :n])
+        # not "raise": that mode takes into a copy first
+        np.take(matrix[row], order.columns, axis=0, out=work[target, :n], mode="clip")
         work[target, n:] = right[row]
     determinant = np.full(matrix.shape[-1], order.sign)
     poor = np.zeros(matrix.shape[-1], dtype=bool)

@@ -169,7 +169,7 @@ Joint: TypeAlias = Rod | Ball | PointOnLine | Hinge | Fixed
 
 @dataclass(frozen=True)
 class PointInput:
-    """Sets the displacement (mm) of a body's point along a chassis direction: one equation."""
+    """Sets the displacement (mm) of a body's point along a chassis direction of any length: one equation."""
 
     name: str
     body: str
@@ -208,6 +208,7 @@ class Mechanism:
         frozen = {name: np.asarray(value, dtype=float) for name, value in self.points.items()}
         object.__setattr__(self, "points", MappingProxyType(frozen))
         _check_references(self)
+        _check_inputs(self)
         _check_geometry(self)
 
     def body(self, name: str) -> Body:
@@ -399,9 +400,13 @@ def _check_references(mechanism: Mechanism) -> None:
                 body=body.name,
             )
         seen.add(body.name)
+    joints: set[str] = set()
     for joint in mechanism.joints:
         if isinstance(joint, Rod) and joint.name in seen:
             raise MechanismError(f"two bodies are called '{joint.name}'", body=joint.name)
+        if joint.name in joints:
+            raise MechanismError(f"two joints are called '{joint.name}'", joint=joint.name)
+        joints.add(joint.name)
         for name in (joint.body_a, joint.body_b):
             if name not in seen or any(name == rod.name for rod in mechanism.rods):
                 raise MechanismError(f"joint '{joint.name}' ties an unknown body '{name}'", joint=joint.name)
@@ -415,6 +420,37 @@ def _check_references(mechanism: Mechanism) -> None:
         point = mechanism.points[name]
         if point.shape[-1:] != (3,) or not np.isfinite(point).all():
             raise MechanismError(f"the point {name} must be three finite numbers")
+
+
+def _check_inputs(mechanism: Mechanism) -> None:
+    """Refuse inputs of one name, inputs that move no body, and inputs without a coordinate or direction to set."""
+    moving = {body.name: body for body in mechanism.bodies}
+    names: set[str] = set()
+    driven: set[str] = set()
+    for item in mechanism.inputs:
+        if item.name in names:
+            raise MechanismError(f"two inputs are called '{item.name}'")
+        names.add(item.name)
+        if item.body not in moving:
+            raise MechanismError(
+                f"the input '{item.name}' is to move '{item.body}', which is no moving body; "
+                f"moving bodies: {', '.join(moving) or 'none'}",
+                body=item.body,
+            )
+        if isinstance(item, PointInput):
+            size = float(np.linalg.norm(item.direction))
+            if not (np.isfinite(size) and size > 0.0):
+                raise MechanismError(f"the input '{item.name}' needs a direction of three finite numbers, not all zero")
+            continue
+        if isinstance(moving[item.body], FreeBody):
+            raise MechanismError(
+                f"the input '{item.name}' is to set the coordinate of '{item.body}', which is free; "
+                "only a hinged or a sliding body has one",
+                body=item.body,
+            )
+        if item.body in driven:
+            raise MechanismError(f"two inputs set the coordinate of '{item.body}'", body=item.body)
+        driven.add(item.body)
 
 
 def _point_references(mechanism: Mechanism) -> Iterator[tuple[str, str]]:
@@ -436,7 +472,11 @@ def _check_geometry(mechanism: Mechanism) -> None:
         return bool((np.linalg.norm(points[a] - points[b], axis=-1) > COINCIDENT_MM).all())
 
     for body in mechanism.bodies:
-        if isinstance(body, FreeBody) or isinstance(body.axis, str):
+        if isinstance(body, FreeBody):
+            continue
+        if isinstance(body.axis, str):
+            if not (np.linalg.norm(points[body.axis], axis=-1) > 0.0).all():
+                raise MechanismError(f"{body.axis} has no direction, so '{body.name}' cannot slide", body=body.name)
             continue
         first, second = body.axis
         if not apart(first, second):
@@ -473,3 +513,13 @@ def _check_geometry(mechanism: Mechanism) -> None:
                 f"{pair[0]} and {pair[1]} are the same point, so '{joint.name}' has no length; move them apart",
                 joint=joint.name,
             )
+        if isinstance(joint, PointOnLine):
+            along = points[joint.line[1]] - points[joint.line[0]]
+            off = np.cross(along, points[joint.at] - points[joint.line[0]])
+            off = off / np.linalg.norm(along, axis=-1, keepdims=True)
+            if not (np.linalg.norm(off, axis=-1) <= COINCIDENT_MM).all():
+                raise MechanismError(
+                    f"{joint.at} does not lie on the line through {' and '.join(joint.line)}, on which "
+                    f"'{joint.name}' is to keep it; move it there",
+                    joint=joint.name,
+                )

@@ -18,14 +18,12 @@ from knucklepath.kinematics.closure import pose_frames, rod_twist
 from knucklepath.kinematics.errors import MechanismError
 from knucklepath.kinematics.following import Solution, follow, solve
 from knucklepath.kinematics.frames import ScrewAxis, cross, screw_axis
+from knucklepath.kinematics.lockup import lock_reason
 from knucklepath.kinematics.mechanism import CHASSIS, Rod
-from knucklepath.kinematics.tree import Frame, State, cross_first
+from knucklepath.kinematics.tree import Frame, cross_first
 from knucklepath.kinematics.wheel import Corner
 
 Array = NDArray[np.float64]
-
-#: Joints that carry more than this share of the greatest reaction at a lock-up are named in its reason.
-NAMED_SHARE = 0.5
 
 
 @dataclass(frozen=True)
@@ -213,13 +211,12 @@ def solve_motion(corner: Corner, travel_mm: ArrayLike, rack_mm: ArrayLike = 0.0)
     ------
     MechanismError : rack displacement is asked of an axle without a rack.
     """
-    travel, rack = np.broadcast_arrays(np.asarray(travel_mm, dtype=float), np.asarray(rack_mm, dtype=float))
-    inputs: dict[str, ArrayLike] = {"travel": travel}
+    travel, rack = np.asarray(travel_mm, dtype=float), np.asarray(rack_mm, dtype=float)
     if corner.steered:
-        inputs["rack"] = rack
-    elif rack.any():
+        return Motion(corner, solve(corner.mechanism, {"travel": travel, "rack": rack}))
+    if rack.any():
         raise MechanismError("this axle has no rack; only rack 0 can be asked for")
-    return Motion(corner, solve(corner.mechanism, inputs))
+    return Motion(corner, solve(corner.mechanism, {"travel": np.broadcast_arrays(travel, rack)[0]}))
 
 
 @dataclass(frozen=True)
@@ -249,7 +246,13 @@ def find_limit(
     -------
     Limit, or None when ``towards`` is reached. A pose where the held input alone cannot be reached gives that
     input's limit.
+
+    Raises
+    ------
+    MechanismError : there is no such input, or the points carry geometry variants.
     """
+    if corner.mechanism.is_batched:
+        raise MechanismError("a limit is sought for one geometry at a time, not for variants")
     held = {"travel": travel_mm, "rack": rack_mm}
     if not corner.steered:
         held.pop("rack")
@@ -266,30 +269,8 @@ def find_limit(
         return None
     value = float(share[0]) * towards
     others = {name: value for name, value in held.items() if name != input}
-    return Limit(input, value, others, lock_reason(replace(first, state=last.state, rates=last.rates)))
-
-
-def lock_reason(solution: Solution) -> str:
-    """Say in words which joints lock at the first pose of a solution next to a singular position.
-
-    The left null vector of the Jacobian is the set of joint reactions that hold the mechanism against its own
-    input (the virtual work of the locked motion); the joints with the greatest of them are the ones in line.
-    """
-    closure = solution.closure
-    state: State = solution.state.take(np.array([0]))
-    left, singular, _ = np.linalg.svd(closure.scaled_jacobian(state))
-    reactions = np.abs(left[:, -1])
-    weights = {joint.name: float(reactions[closure.rows[joint.name]].max()) for joint in closure.mechanism.joints}
-    greatest = max(weights.values(), default=0.0)
-    named = [name for name, weight in weights.items() if weight >= NAMED_SHARE * greatest]
-    ratio = float(singular[-1] / singular[0])
-    if ratio > 0.1 or not named:
-        return "no pose beyond it closes every joint"
-    return f"{_and(named)} {'comes' if len(named) == 1 else 'come'} into line (dead centre): nothing moves beyond it"
-
-
-def _and(names: list[str]) -> str:
-    return names[0] if len(names) == 1 else ", ".join(names[:-1]) + " and " + names[-1]
+    reason = lock_reason(replace(first, state=last.state, rates=last.rates), input, towards)
+    return Limit(input, value, others, reason)
 
 
 __all__ = ["Limit", "Motion", "find_limit", "lock_reason", "solve_motion"]

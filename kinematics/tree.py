@@ -31,10 +31,18 @@ Array = NDArray[np.float64]
 #: No Newton or prediction step turns a body by more than this (rad): a longer one has left the model's trust.
 GREATEST_TURN = 1.0
 
+#: A body held at its own reference point alone turns all the same: arms count as this share of the mechanism's size.
+SHORTEST_ARM_SHARE = 0.05
+
 
 def cross_first(a: Array, b: Array) -> Array:
     """Cross product over the first axis, (3, B) × (3, B)."""
-    return np.stack((a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0]))
+    first = a[1] * b[2]
+    out = np.empty((3, *first.shape))
+    np.subtract(first, a[2] * b[1], out=out[0])
+    np.subtract(a[2] * b[0], a[0] * b[2], out=out[1])
+    np.subtract(a[0] * b[1], a[1] * b[0], out=out[2])
+    return out
 
 
 def dot_first(a: Array, b: Array) -> Array:
@@ -190,6 +198,8 @@ class Tree:
 
     def _scale(self) -> Array:
         scale = np.ones(self.columns)
+        first = [point[:, 0] for point in self.points.values()]
+        least = SHORTEST_ARM_SHARE * float(np.ptp(first, axis=0).max()) if first else 0.0
         for name, link in self.links.items():
             if link.kind == "slide":
                 continue
@@ -197,7 +207,7 @@ class Tree:
                 float(np.max(np.linalg.norm(self.points[point] - link.reference, axis=0)))
                 for point in self.mechanism.attachments(name)
             ]
-            scale[link.column : link.column + (3 if link.kind == "free" else 1)] = max([*arms, 1e-6])
+            scale[link.column : link.column + (3 if link.kind == "free" else 1)] = max([*arms, least, 1e-6])
         return scale
 
     def design(self, count: int) -> State:

@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
-from scipy.optimize import brentq, least_squares
+from scipy.optimize import brentq, least_squares, minimize
+from scipy.spatial.transform import Rotation
 
+from knucklepath.kinematics.closure import Closure, Evaluation
 from knucklepath.kinematics.corner import corner_readings
 from knucklepath.kinematics.errors import MechanismError
+from knucklepath.kinematics.following import follow, solve
 from knucklepath.kinematics.mechanism import (
     Ball,
     CoordinateInput,
@@ -20,6 +25,7 @@ from knucklepath.kinematics.mechanism import (
     SlidingBody,
 )
 from knucklepath.kinematics.motion import find_limit, solve_motion
+from knucklepath.kinematics.tree import State
 from knucklepath.kinematics.wheel import Corner, Wheel
 from knucklepath.plugins.layouts import double_a_arm, five_link, semi_trailing_arm, strut
 
@@ -91,6 +97,119 @@ def test_the_limit_of_a_double_a_arm_equals_an_independent_search() -> None:
     assert limit.value_mm == pytest.approx(best, abs=0.02)
 
 
+@pytest.mark.parametrize(
+    "module", [double_a_arm, strut, five_link, semi_trailing_arm], ids=lambda module: module.LAYOUT.id
+)
+def test_starts_from_the_coarse_grid_are_so_good_that_one_newton_step_is_enough(
+    module: object, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    corner = corner_of(module)
+    seen: list[float] = []
+    evaluate = Closure.evaluate
+
+    def watched(closure: Closure, state: State, *others: object) -> Evaluation:
+        found = evaluate(closure, state, *others)  # type: ignore[arg-type]
+        if state.count == 31 * 21:
+            seen.append(float(found.error.max()))
+        return found
+
+    monkeypatch.setattr(Closure, "evaluate", watched)
+    rack = np.linspace(-25.0, 25.0, 21) * float(corner.steered)
+    motion = solve_motion(corner, np.linspace(-60.0, 60.0, 31)[:, None], rack)
+    assert motion.reached.all()
+    start, end = seen
+    assert start < 1e-3
+    assert end <= 1e-10
+
+
+@pytest.mark.parametrize("sense", [1.0, -1.0])
+def test_the_limits_of_a_five_link_equal_an_optimiser_that_seeks_the_highest_and_lowest_wheel_centre(
+    sense: float,
+) -> None:
+    """Five lengths held, the wheel centre as high or low as it goes: sequential quadratic programming from scipy."""
+    corner = corner_of(five_link)
+    points = corner.mechanism.points
+    links = [rod.name for rod in corner.mechanism.rods]
+    inboard = np.array([points[f"{link}.inboard"] for link in links])
+    arms = np.array([points[f"{link}.outboard"] - points["wheel.centre"] for link in links])
+    lengths = np.linalg.norm(inboard - arms - points["wheel.centre"], axis=1)
+    limit = find_limit(corner, "travel", sense * 900.0)
+    assert limit is not None
+    near = solve_motion(corner, 0.9 * limit.value_mm)
+    turned, hub = Rotation.from_matrix(near.rotation("knuckle")), near.point("knuckle", points["wheel.centre"])
+
+    def open_by(x: np.ndarray) -> np.ndarray:
+        ends = (Rotation.from_rotvec(x[:3]) * turned).apply(arms) + hub + 100.0 * x[3:]
+        return (np.linalg.norm(ends - inboard, axis=1) - lengths) / 100.0
+
+    found = minimize(
+        lambda x: -sense * x[5],
+        np.zeros(6),
+        method="SLSQP",
+        constraints={"type": "eq", "fun": open_by},
+        options={"ftol": 1e-13, "maxiter": 500},
+    )
+    assert np.abs(open_by(found.x)).max() < 1e-7
+    highest = hub[2] + 100.0 * found.x[5] - points["wheel.centre"][2]
+    assert limit.value_mm == pytest.approx(highest, abs=0.01)
+
+
+@pytest.mark.parametrize("module", [double_a_arm, strut, five_link], ids=lambda module: module.LAYOUT.id)
+def test_geometry_variants_lock_where_each_locks_alone(module: object) -> None:
+    corner = corner_of(module)
+    random = np.random.default_rng(6)
+    limit = find_limit(corner, "travel", -900.0)
+    assert limit is not None
+    variants = {
+        name: at if name == "rack.axis" else at + random.uniform(-15.0, 15.0, (6, 1, 3))
+        for name, at in corner.mechanism.points.items()
+    }
+    together = replace(corner, mechanism=corner.mechanism.with_points(variants))
+    travel = limit.value_mm * np.linspace(0.6, 1.3, 8)
+    motion = solve_motion(together, travel)
+    assert motion.shape == (6, 8)
+    assert motion.reached.any()
+    assert not motion.reached.all()
+    for k in range(6):
+        alone = {name: at[k, 0] if at.ndim > 1 else at for name, at in variants.items()}
+        single = replace(corner, mechanism=corner.mechanism.with_points(alone))
+        locks = find_limit(single, "travel", -900.0)
+        assert locks is not None
+        sure = np.abs(travel - locks.value_mm) > 0.02
+        np.testing.assert_array_equal(motion.reached[k, sure], (travel > locks.value_mm)[sure])
+
+
+@pytest.mark.parametrize("module", [double_a_arm, strut, five_link], ids=lambda module: module.LAYOUT.id)
+def test_a_path_out_to_the_limit_and_back_ends_where_it_began(module: object) -> None:
+    """Step by step along the path, each from the last, almost into the dead centre and home on the same branch."""
+    corner = corner_of(module)
+    limit = find_limit(corner, "travel", 900.0)
+    assert limit is not None
+    closure = Closure(corner.mechanism)
+    state, at = closure.tree.design(1), 0.0
+    for target in limit.value_mm * np.array([0.5, 0.9, 0.999, 0.7, 0.2, 0.0]):
+        begin, end = ({"travel": np.array([value]), "rack": np.zeros(1)} for value in (at, target))
+        done, share = follow(closure, state, begin, end)
+        assert share[0] == 1.0
+        assert done.error[0] <= 1e-9
+        state, at = done.state, target
+    np.testing.assert_allclose(state.turns[..., 0], closure.tree.design(1).turns[..., 0], atol=1e-9)
+    np.testing.assert_allclose(state.places, closure.tree.design(1).places, atol=1e-8)
+
+
+def test_how_much_of_the_way_was_made_is_told_for_poses_out_of_reach() -> None:
+    corner = corner_of(double_a_arm)
+    limit = find_limit(corner, "travel", 900.0)
+    assert limit is not None
+    solution = solve(corner.mechanism, {"travel": np.array([2.0, 0.5]) * limit.value_mm})
+    assert solution.reached.tolist() == [False, True]
+    np.testing.assert_allclose(solution.share, [0.5, 1.0], atol=1e-4)
+    # the state is that of the last pose on the way
+    height = solution.state.places[0, 2] - corner.mechanism.points["wheel.centre"][2]
+    np.testing.assert_allclose(height, np.array([1.0, 0.5]) * limit.value_mm, atol=0.01)
+    assert abs(solution.determinant[0]) < 0.05
+
+
 @pytest.mark.parametrize("module", [double_a_arm, strut, five_link], ids=lambda module: module.LAYOUT.id)
 @pytest.mark.parametrize("towards", [900.0, -900.0])
 def test_poses_beyond_a_limit_are_not_reached_and_those_before_it_are(module: object, towards: float) -> None:
@@ -150,8 +269,6 @@ def crank_slider(crank: float, rod: float) -> Mechanism:
 
 
 def test_a_crank_slider_locks_at_its_dead_centre() -> None:
-    from knucklepath.kinematics.following import solve
-
     mechanism = crank_slider(50.0, 130.0)
     start = mechanism.points["head"][0]
     pushes = np.linspace(-150.0, 60.0, 43)
@@ -179,8 +296,6 @@ def test_a_point_on_a_line_carries_a_strut_as_a_sliding_body_does() -> None:
 
 
 def test_equations_and_unknowns_that_do_not_match_are_refused() -> None:
-    from knucklepath.kinematics.following import solve
-
     loose = Mechanism(
         (FreeBody("block"),),
         (Ball("pin", "chassis", "block", "at"),),

@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 
 LAYOUTS: tuple[Layout, ...] = (double_a_arm.LAYOUT, strut.LAYOUT, five_link.LAYOUT, semi_trailing_arm.LAYOUT)
 SOME = settings(
-    max_examples=20, deadline=None, suppress_health_check=[HealthCheck.filter_too_much, HealthCheck.too_slow]
+    max_examples=40, deadline=None, suppress_health_check=[HealthCheck.filter_too_much, HealthCheck.too_slow]
 )
 
 
@@ -111,6 +111,10 @@ def test_a_mirrored_geometry_gives_mirrored_motion(corner: Corner) -> None:
     for name in bodies(corner):
         np.testing.assert_allclose(here.rotation(name), there.rotation(name) * turn, atol=1e-9)
         np.testing.assert_allclose(here.translation(name), there.translation(name) * mirror, atol=1e-7)
+        # a turn is mirrored the other way round
+        for per in ("travel", "rack") if corner.steered else ("travel",):
+            twist = there.twist(name, per) * np.concatenate((-mirror, mirror))
+            np.testing.assert_allclose(here.twist(name, per), twist, rtol=1e-7, atol=1e-7)
 
 
 @SOME
@@ -149,6 +153,30 @@ def test_moving_the_whole_car_changes_no_reading_that_should_not_change(
     ):
         np.testing.assert_allclose(second[column], first[column], rtol=1e-6, atol=1e-6, err_msg=column)
     np.testing.assert_allclose(second["contact_z_mm"] - shift[2], first["contact_z_mm"], rtol=0.0, atol=1e-7)
+
+
+@SOME
+@given(corners(), st.tuples(*[st.floats(-800.0, 800.0)] * 3))
+def test_a_car_drawn_elsewhere_reads_the_same(corner: Corner, shift: tuple[float, float, float]) -> None:
+    """The origin is a draughtsman's choice: coordinates move with it, and nothing else changes at all."""
+    moved = {
+        name: at + (0.0 if name == "rack.axis" else np.array(shift)) for name, at in corner.mechanism.points.items()
+    }
+    assert corner.spring is not None
+    spring = replace(corner.spring, chassis=corner.spring.chassis + shift, moving=corner.spring.moving + shift)
+    wheel = replace(corner.wheel, centre=moved["wheel.centre"])
+    other = replace(corner, mechanism=corner.mechanism.with_points(moved), wheel=wheel, spring=spring)
+    first, second = corner_readings(grid(corner)), corner_readings(grid(other))
+    by = dict(zip("xyz", shift, strict=True))
+    for column, value in first.items():
+        if column == "roll_centre_height_mm":
+            # the one reading that is measured from the car's middle: its slope stays
+            expected = value * (first["contact_y_mm"] + by["y"]) / first["contact_y_mm"]
+        elif column.endswith(("_x_mm", "_y_mm", "_z_mm")):
+            expected = value + by[column[-4]]
+        else:
+            expected = value
+        np.testing.assert_allclose(second[column], expected, rtol=1e-6, atol=1e-6, err_msg=column)
 
 
 @SOME
