@@ -117,6 +117,15 @@ def test_a_joint_is_closed_at_the_design_position(kind: str) -> None:
     assert closure.evaluate(closure.tree.design(2), {}).error.max() < 1e-12
 
 
+def test_a_point_a_hair_off_its_line_is_closed_at_design_all_the_same() -> None:
+    made = points()
+    hair = np.cross(made["q"] - made["p"], [0.0, 0.0, 1.0])
+    made["on_line"] = made["on_line"] + 5e-4 * hair / np.linalg.norm(hair)
+    joint = PointOnLine("joint", "block", "on_line", "chassis", ("p", "q"))
+    closure = Closure(Mechanism(BODIES, (joint,), (), made))
+    assert closure.evaluate(closure.tree.design(1), {}).error.max() < 1e-12
+
+
 def test_residuals_are_in_millimetres() -> None:
     """A block moved by 0.3 mm opens a ball joint by that, and a rod along its length by that."""
     apart = np.array([0.1, -0.2, 0.2])
