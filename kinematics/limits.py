@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from difflib import get_close_matches
 from typing import TypeAlias
 
 import numpy as np
@@ -35,7 +36,11 @@ BEYOND = 0.5
 class JointLimit:
     """A ball joint or rod end whose stud may lean by ``greatest_deg`` from ``axis`` (3,), where both stand at design.
 
-    joint : the hardpoint's name, "lower_arm.ball_joint" or "tie_rod.outboard".
+    joint : the hardpoint's name, "lower_arm.ball_joint" or "tie_rod.outboard", or the ball joint's own, "top mount".
+        Where several joints meet at a hardpoint, the limit is for each of them.
+
+    A rod's pose has no spin about the rod's own line. A rod end whose stud stands across the rod is judged so; play
+    that lets the rod roll shares the lean out between its two ends.
     """
 
     joint: str
@@ -47,7 +52,8 @@ class JointLimit:
 class DriveShaft:
     """A shaft from ``inner`` on the chassis to ``outer`` on the knuckle, both (3,) mm at design.
 
-    inner_axis (3,) : of the output that the shaft hangs on. Limits in deg and mm; None where not stated.
+    inner_axis (3,) : of the output that the shaft hangs on, in either sense. Limits in deg and mm; None where not
+    stated.
     """
 
     inner: Array
@@ -76,23 +82,31 @@ class LimitResult:
     note: str = ""
 
 
-def joint_bodies(mechanism: Mechanism, point: str) -> tuple[str, str]:
-    """The two bodies that a ball joint or a rod end at a hardpoint ties together.
+def joint_bodies(mechanism: Mechanism, joint: str) -> tuple[tuple[str, str], ...]:
+    """The pairs of bodies that ball joints and rod ends tie together: at a hardpoint, or by a ball joint's own name.
 
     Raises
     ------
-    MechanismError : there is no such joint at that point; the message names those that there are.
+    MechanismError : there is no such joint; the message gives the nearest name and those that there are.
     """
-    known: dict[str, tuple[str, str]] = {}
-    for joint in mechanism.joints:
-        if isinstance(joint, Ball):
-            known[joint.at] = (joint.body_a, joint.body_b)
-        elif isinstance(joint, Rod):
-            known[joint.point_a] = (joint.name, joint.body_a)
-            known[joint.point_b] = (joint.name, joint.body_b)
-    if point not in known:
-        raise MechanismError(f"there is no ball joint or rod end '{point}'; joints: {', '.join(known) or 'none'}")
-    return known[point]
+    known: dict[str, list[tuple[str, str]]] = {}
+    for item in mechanism.joints:
+        if isinstance(item, Ball):
+            known.setdefault(item.at, []).append((item.body_a, item.body_b))
+        elif isinstance(item, Rod):
+            known.setdefault(item.point_a, []).append((item.name, item.body_a))
+            known.setdefault(item.point_b, []).append((item.name, item.body_b))
+    points = list(known)
+    for item in mechanism.joints:
+        if isinstance(item, Ball):
+            known.setdefault(item.name, [(item.body_a, item.body_b)])
+    if joint not in known:
+        near = get_close_matches(joint, known, n=1)
+        hint = f"did you mean '{near[0]}'? " if near else ""
+        raise MechanismError(
+            f"there is no ball joint or rod end '{joint}'; {hint}Joints: {', '.join(points) or 'none'}"
+        )
+    return tuple(known[joint])
 
 
 def check_limits(
@@ -174,10 +188,14 @@ def _angle_deg(motion: Motion, first: Array, second: Array) -> Array:
 
 
 def _joint(search: _Search, limit: JointLimit) -> LimitResult:
-    first, second = joint_bodies(search.corner.mechanism, limit.joint)
+    pairs = joint_bodies(search.corner.mechanism, limit.joint)
 
     def lean(motion: Motion) -> Array:
-        return _angle_deg(motion, motion.turn_last(first, limit.axis), motion.turn_last(second, limit.axis))
+        leans = [
+            _angle_deg(motion, motion.turn_last(first, limit.axis), motion.turn_last(second, limit.axis))
+            for first, second in pairs
+        ]
+        return np.asarray(np.maximum.reduce(leans))
 
     return search.result(f"{limit.joint}, angle", "at most", limit.greatest_deg, "deg", lean)
 
@@ -190,16 +208,21 @@ def _spring_length(motion: Motion) -> Array:
 
 
 def _shaft(search: _Search, shaft: DriveShaft) -> list[LimitResult]:
-    design = float(np.linalg.norm(shaft.outer - shaft.inner))
+    at_design = shaft.outer - shaft.inner
+    design = float(np.linalg.norm(at_design))
+    # an axis is a line: a shaft bends by the acute angle to it, whichever way the direction was written
+    inner_axis, spin_axis = (
+        axis * np.copysign(1.0, axis @ at_design) for axis in (shaft.inner_axis, search.corner.wheel.spin_axis)
+    )
 
     def along(motion: Motion) -> Array:
         return motion.point_last("wheel", shaft.outer) - shaft.inner[:, None]
 
     def inner(motion: Motion) -> Array:
-        return _angle_deg(motion, along(motion), np.broadcast_to(shaft.inner_axis[:, None], along(motion).shape))
+        return _angle_deg(motion, along(motion), np.broadcast_to(inner_axis[:, None], along(motion).shape))
 
     def outer(motion: Motion) -> Array:
-        return _angle_deg(motion, along(motion), motion.turn_last("wheel", motion.corner.wheel.spin_axis))
+        return _angle_deg(motion, along(motion), motion.turn_last("wheel", spin_axis))
 
     def plunge(motion: Motion) -> Array:
         reach = along(motion)
@@ -230,13 +253,11 @@ def _lock_up(corner: Corner, travel_mm: Range, rack_mm: Range) -> list[LimitResu
 
 
 def _margin(name: str, end: float, towards: float, found: list[tuple[Limit | None, float]], moving: str) -> LimitResult:
-
-    worst, held, note = abs(towards), 0.0, f"none up to {abs(towards):.0f} mm"
+    worst, held, note = abs(towards), 0.0, f"no lock-up as far as {abs(towards):.1f} mm"
     for limit, other in found:
-        if limit is not None:
-            reached = abs(limit.value_mm) if limit.input == moving else 0.0
-            if reached < worst:
-                worst, held, note = reached, other, limit.reason
+        # where the held input alone locks, the margin of that input says so; this one has none to tell
+        if limit is not None and limit.input == moving and abs(limit.value_mm) < worst:
+            worst, held, note = abs(limit.value_mm), other, limit.reason
     value = np.copysign(worst, end)
     travel, rack = (value, held) if moving == "travel" else (held, value)
     return LimitResult(name, "at least", worst, abs(end), "mm", worst >= abs(end), float(travel), float(rack), note)

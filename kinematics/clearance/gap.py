@@ -18,8 +18,9 @@ Verdict: TypeAlias = Literal["clear", "tight", "touching", "undecided"]
 
 #: What a proof takes for granted, for every report.
 ASSUMPTIONS = (
-    "Proven for rigid parts as drawn and joints without play, at every pose of the stated travel and rack. The motion "
-    "is taken from polynomials that keep to solved poses within a millionth of a millimetre where tried."
+    "Gaps are proven for rigid parts as drawn and joints without play, at every pose of the stated travel and rack; "
+    "limits of joints, spring, shaft and lock-up are searched, not proven. The motion is taken from polynomials that "
+    "keep to solved poses within a millionth of a millimetre where tried."
 )
 #: What a sampled search is not, for every report.
 SAMPLED = (

@@ -12,6 +12,7 @@ from knucklepath.kinematics.limits import DriveShaft, JointLimit, check_limits, 
 from knucklepath.kinematics.motion import find_limit, solve_motion
 from knucklepath.kinematics.wheel import Corner, Spring, Wheel
 from knucklepath.plugins.layouts.double_a_arm import LAYOUT
+from knucklepath.plugins.layouts.five_link import LAYOUT as FIVE_LINK
 
 TRAVEL, RACK = (-50.0, 60.0), (-30.0, 30.0)
 UP = np.array([0.0, 0.0, 1.0])
@@ -55,10 +56,32 @@ def test_a_stud_along_the_steering_axis_does_not_lean_by_steering_alone(corner: 
 
 
 def test_rod_ends_and_ball_joints_are_known_by_their_hardpoint(corner: Corner) -> None:
-    assert joint_bodies(corner.mechanism, "upper_arm.ball_joint") == ("upper_arm", "knuckle")
-    assert joint_bodies(corner.mechanism, "tie_rod.inboard") == ("tie_rod", "rack")
+    assert joint_bodies(corner.mechanism, "upper_arm.ball_joint") == (("upper_arm", "knuckle"),)
+    assert joint_bodies(corner.mechanism, "upper ball joint") == (("upper_arm", "knuckle"),)
+    assert joint_bodies(corner.mechanism, "tie_rod.inboard") == (("tie_rod", "rack"),)
     with pytest.raises(MechanismError, match=r"no ball joint or rod end 'upper_arm\.front_pivot'"):
         joint_bodies(corner.mechanism, "upper_arm.front_pivot")
+    with pytest.raises(MechanismError, match=r"did you mean 'tie_rod\.outboard'"):
+        joint_bodies(corner.mechanism, "tierod.outbord")
+
+
+def test_where_two_rods_meet_the_one_that_leans_more_is_reported() -> None:
+    """The same corner, with both lower links on one knuckle point: the limit there is for both of them."""
+    apart = FIVE_LINK.mechanism(FIVE_LINK.example)
+    shared = tuple(
+        replace(joint, point_b="lower_front.outboard") if joint.name == "lower_rear" else joint
+        for joint in apart.joints
+    )
+    wheel = Wheel(FIVE_LINK.example["wheel.centre"], 280.0)
+    corner = Corner(replace(apart, joints=shared), wheel)
+    (result, *_) = check_limits(corner, TRAVEL, RACK, (JointLimit("lower_front.outboard", UP, 10.0),))
+    motion = dense(corner)
+    leans = {
+        rod: np.degrees(np.arccos(((motion.rotation(rod) @ UP) * (motion.rotation("knuckle") @ UP)).sum(axis=-1))).max()
+        for rod in ("lower_front", "lower_rear")
+    }
+    assert abs(leans["lower_front"] - leans["lower_rear"]) > 0.1
+    assert result.extreme == pytest.approx(max(leans.values()), abs=0.01)
 
 
 def test_the_spring_is_held_against_both_its_lengths(corner: Corner) -> None:
@@ -87,7 +110,18 @@ def test_a_drive_shaft_bends_and_plunges_as_its_geometry_says(corner: Corner) ->
     assert angle.ok == (bends.max() <= 8.0)
     slides = np.abs(np.linalg.norm(along, axis=-1) - 420.0)
     assert plunge.extreme == pytest.approx(slides.max(), abs=1e-3)
-    assert 0.0 < other.extreme < 30.0
+    axes = motion.rotation("wheel") @ corner.wheel.spin_axis
+    crossed = np.linalg.norm(np.cross(along, axes), axis=-1)
+    assert other.extreme == pytest.approx(np.degrees(np.arctan2(crossed, (along * axes).sum(axis=-1))).max(), abs=1e-3)
+    assert plunge.travel_mm == 60.0
+
+
+def test_an_output_axis_may_be_written_in_either_sense(corner: Corner) -> None:
+    outer = corner.wheel.centre
+    shafts = [DriveShaft(outer - [0.0, 420.0, 0.0], outer, np.array([0.0, sense, 0.0]), 25.0) for sense in (1.0, -1.0)]
+    one, other = (check_limits(corner, TRAVEL, RACK, shaft=shaft)[0] for shaft in shafts)
+    assert one == other
+    assert one.ok
 
 
 def test_lock_up_margins_are_those_of_find_limit(corner: Corner) -> None:
@@ -100,7 +134,7 @@ def test_lock_up_margins_are_those_of_find_limit(corner: Corner) -> None:
     assert rebound.ok
     assert rebound.note == limit.reason
     assert results["travel to lock-up, bump"].ok
-    assert "none up to 60 mm" in results["travel to lock-up, bump"].note
+    assert "no lock-up as far as 60.0 mm" in results["travel to lock-up, bump"].note
 
 
 def test_a_motion_beyond_lock_up_fails_its_margin(corner: Corner) -> None:
@@ -108,3 +142,10 @@ def test_a_motion_beyond_lock_up_fails_its_margin(corner: Corner) -> None:
     assert limit is not None
     results = {result.name: result for result in check_limits(corner, (limit.value_mm - 10.0, 60.0), (0.0, 0.0))}
     assert not results["travel to lock-up, rebound"].ok
+
+
+def test_travel_that_locks_is_not_blamed_on_the_rack(corner: Corner) -> None:
+    results = {result.name: result for result in check_limits(corner, (-50.0, 900.0), (-10.0, 10.0))}
+    assert not results["travel to lock-up, bump"].ok
+    assert results["rack to lock-up, left"].ok
+    assert results["rack to lock-up, left"].extreme == 15.0

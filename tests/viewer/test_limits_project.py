@@ -42,12 +42,17 @@ def test_limits_are_read_and_checked(
     full_project.write_text(text + LIMITS.format(cone=2.0))
     assert main(["clearance", str(full_project)]) == 1
     line = next(line for line in capsys.readouterr().out.splitlines() if "lower_arm.ball_joint, angle" in line)
-    assert "passed" in line
+    assert "exceeded" in line
     assert "travel" in line
 
 
 WRONG = {
     "unknown joint": ('joint = "lower_arm.ball_joint"', 'joint = "lower_arm.pivot"', "no ball joint or rod end"),
+    "misspelt joint": (
+        'joint = "lower_arm.ball_joint"',
+        'joint = "lower_arm.bal_joint"',
+        "did you mean 'lower_arm.ball",
+    ),
     "axis without direction": ("axis = [0.0, 0.0, 2.0]", "axis = [0.0, 0.0, 0.0]", "has no direction"),
     "cone of nothing": ("greatest_deg = 60.0", "greatest_deg = 0.0", "greatest_deg"),
     "shaft without length": ("outer = [0.0, 640.0, 205.0]", "outer = [0.0, 200.0, 220.0]", "same point"),

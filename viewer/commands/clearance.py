@@ -160,13 +160,13 @@ def _limit_table(project: Project, limits: Sequence[LimitResult]) -> Table:
     ):
         table.add_column(heading, justify=justify)  # type: ignore[arg-type]
     for limit in limits:
-        word = "kept" if limit.ok else "[bold]passed[/bold]"
+        word = "kept" if limit.ok else "[bold]exceeded[/bold]"
         sign = "≤" if limit.kind == "at most" else "≥"
         table.add_row(
             escape(limit.name),
             word,
             f"{figure(limit.extreme, 'mm')} {limit.unit}",
             f"{sign} {figure(limit.limit, 'mm')} {limit.unit}",
-            pose_text(project, limit) if "lock-up" not in limit.name else escape(limit.note),
+            f"{pose_text(project, limit)}{': ' + escape(limit.note) if limit.note else ''}",
         )
     return table
