@@ -26,7 +26,7 @@ BAR_LENGTHS = (1, 2, 5, 10, 20, 50, 100, 200, 500, 1000, 2000, 5000)
 #: A picture lower than this, px, is a thumbnail: words would cover it.
 LOWEST_WITH_WORDS = 200
 #: How opaque the plates of labels are, and the veil under the words at the edges, of 255.
-PLATE_ALPHA, VEIL_ALPHA = 222, 200
+PLATE_ALPHA, VEIL_ALPHA = 222, 238
 
 
 @dataclass(frozen=True)

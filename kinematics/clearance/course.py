@@ -18,6 +18,12 @@ from knucklepath.kinematics.clearance.cells import values_at
 Array: TypeAlias = NDArray[np.float64]
 
 
+#: How near the polynomials keep to solved poses, mm, where the motion lets them …
+ACCURACY_MM = 1e-6
+#: … within this many halvings of its rectangle; beyond, the error is what it is, and is reported.
+MOST_HALVINGS = 8
+
+
 @dataclass(frozen=True)
 class Tile:
     """A rectangle low…high (2,) and coefficients (nu, nv, 12): nine of the rotation, three of the shift.
@@ -65,7 +71,7 @@ def tiles(
     low: Array,
     high: Array,
     reach_mm: float,
-    accuracy_mm: float = 1e-6,
+    accuracy_mm: float = ACCURACY_MM,
     degrees: tuple[int, int] = (14, 11),
     depth: int = 0,
 ) -> list[Tile]:
@@ -87,7 +93,7 @@ def tiles(
     tile = Tile(low, high, coefficients, 0.0, np.zeros((2, 2)))
     apart = np.abs(evaluate(tile, u[number:], v[number:]) - solved[number:])
     error = float(np.max(apart[:, :9].max(axis=1) * 3.0 * reach_mm + apart[:, 9:].max(axis=1) * 1.7321))
-    if error <= accuracy_mm or depth >= 8:
+    if error <= accuracy_mm or depth >= MOST_HALVINGS:
         return [Tile(low, high, coefficients, error, _third(coefficients, low, high, reach_mm))]
     # halve along the axis whose last coefficients are the larger ones
     tail = [float(np.abs(np.take(coefficients, [-1, -2], axis=k)).max()) if wide[k] else 0.0 for k in range(2)]

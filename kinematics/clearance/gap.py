@@ -20,7 +20,7 @@ Verdict: TypeAlias = Literal["clear", "tight", "touching", "undecided"]
 ASSUMPTIONS = (
     "Gaps are proven for rigid parts as drawn and joints without play, at every pose of the stated travel and rack; "
     "limits of joints, spring, shaft and lock-up are searched, not proven. The motion is taken from polynomials that "
-    "keep to solved poses within a millionth of a millimetre where tried."
+    "keep to solved poses within a millionth of a millimetre where tried, unless a pair says otherwise."
 )
 #: What a sampled search is not, for every report.
 SAMPLED = (

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from knucklepath.kinematics.clearance.boxes import BoxTree, build_tree
 from knucklepath.kinematics.clearance.compiled import is_kept
-from knucklepath.kinematics.clearance.course import Tile, tiles
+from knucklepath.kinematics.clearance.course import ACCURACY_MM, Tile, tiles
 from knucklepath.kinematics.clearance.gap import Gap, Verdict, relative_poses, sound_faces, worst_first
 from knucklepath.kinematics.clearance.inside import (
     is_closed,
@@ -181,6 +181,8 @@ def _prove_pair(
     assert search.on_a is not None
     assert search.on_b is not None
     note = _notes(pair, first, second)
+    if search.error_mm > ACCURACY_MM:
+        note = f"{note} {pair.a.name} and {pair.b.name}: polynomials up to {search.error_mm:.1e} mm off.".strip()
     if proven is None:
         note = f"{note} The search gave up after {search.evaluations} evaluations.".strip()
     return _gap(pair, place, search.best, proven, search.on_a, search.on_b, search.evaluations, note, doubtful)

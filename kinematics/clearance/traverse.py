@@ -106,6 +106,16 @@ def _place(tree, node, rotation, shift, centre, axes):
 
 
 @compiled
+def _move(corners, rotation, shift, moved):
+    """Where a triangle (3, 3) of the moving tree is."""
+    for v in range(3):
+        for i in range(3):
+            moved[v, i] = shift[i]
+            for k in range(3):
+                moved[v, i] += rotation[i, k] * corners[v, k]
+
+
+@compiled
 def _apart(s, t, guess, squared):
     """Whether two triangles keep a squared distance along one direction."""
     low, high = np.inf, -np.inf
@@ -143,11 +153,7 @@ def distance(a, b, rotation, shift, limit):
         leaf_a, leaf_b = a.child[na] < 0, b.child[nb] < 0
         if leaf_a and leaf_b:
             for j in range(b.start[nb], b.start[nb] + b.length[nb]):
-                for v in range(3):
-                    for i in range(3):
-                        moved[v, i] = shift[i]
-                        for k in range(3):
-                            moved[v, i] += rotation[i, k] * b.corners[j, v, k]
+                _move(b.corners[j], rotation, shift, moved)
                 for i in range(a.start[na], a.start[na] + a.length[na]):
                     if _apart(a.corners[i], moved, guess, best):
                         continue
@@ -338,11 +344,7 @@ def cell_holds(a, b, threshold, cell, hint_a, hint_b, most, direction):
         leaf_a, leaf_b = a.child[na] < 0, b.child[nb] < 0
         if leaf_a and leaf_b:
             for j in range(b.start[nb], b.start[nb] + b.length[nb]):
-                for v in range(3):
-                    for i in range(3):
-                        moved[v, i] = shift[i]
-                        for k in range(3):
-                            moved[v, i] += rotation[i, k] * b.corners[j, v, k]
+                _move(b.corners[j], rotation, shift, moved)
                 for i in range(a.start[na], a.start[na] + a.length[na]):
                     apart = np.sqrt(triangle_triangle(a.corners[i], moved, 1e300, on_a, on_b, work_a, work_b))
                     if apart > 1e-9:

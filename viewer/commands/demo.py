@@ -63,7 +63,7 @@ def _draw(project_path: str, folder: Path) -> None:
         ("front", "front", 0.0, 0.0),
         ("side", "side", 0.0, 0.0),
         ("top", "top", 0.0, 0.0),
-        ("tightest", "corner", worst["travel_mm"], worst["rack_mm"]),
+        ("tightest", "top", worst["travel_mm"], worst["rack_mm"]),
     )
     for name, look, travel, rack in poses:
         out = folder / f"{name}.png"

@@ -22,6 +22,7 @@ from knucklepath.kinematics.clearance.relief import without_spheres
 from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.clearance.solids import RodStyle, Solid, generated_solids
 from knucklepath.kinematics.clearance.traverse import distance, distance_at_each
+from knucklepath.kinematics.clearance.triangles import triangle_triangle
 from knucklepath.kinematics.mechanism import Layout
 from knucklepath.kinematics.motion import find_limit, solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel
@@ -106,6 +107,40 @@ def test_principal_axes_equal_lapack(seed: int) -> None:
     turned = axes.T @ matrix @ axes
     np.testing.assert_allclose(np.sort(np.diag(turned)), np.linalg.eigvalsh(matrix), atol=1e-12 * np.trace(matrix))
     np.testing.assert_array_equal(principal_axes(np.zeros((3, 3))), np.eye(3))
+
+
+@settings(max_examples=25, deadline=None)
+@given(st.integers(0, 2**32 - 1))
+def test_the_tree_equals_brute_force_over_every_pair_of_triangles(seed: int) -> None:
+    """Degenerate and repeated triangles included: the tree leaves out no pair that matters."""
+    random = np.random.default_rng(seed)
+    a, b = (soup(random, int(random.integers(1, 30)), 40.0) for _ in range(2))
+    shift = random.uniform(-120.0, 120.0, 3)
+    value, *_ = distance(build_tree(*a), build_tree(*b), np.eye(3), shift, FAR)
+    room = [np.zeros(3) for _ in range(4)]
+    squared = min(triangle_triangle(first, second + shift, FAR, *room) for first in a[0][a[1]] for second in b[0][b[1]])
+    assert value == pytest.approx(np.sqrt(squared), abs=1e-9)
+
+
+def test_nothing_is_proven_falsely_with_a_large_rack_and_long_thin_parts(corner: Corner) -> None:
+    """The rack to within 8 mm of where it locks; needles a metre long."""
+    travel, rack = (-70.0, 80.0), (-50.0, 50.0)
+    assert solve_motion(corner, np.linspace(*travel, 9)[:, None], np.linspace(*rack, 9)[None]).reached.all()
+    hub = corner.wheel.centre
+    needle = Solid("needle", "wheel", *cylinder(hub + [-500.0, 30.0, 90.0], hub + [500.0, 20.0, 60.0], 0.4, 7))
+    post = Solid("post", "chassis", *cylinder(hub + [180.0, -160.0, -500.0], hub + [200.0, -120.0, 500.0], 0.4, 7))
+    (gap,) = proved_gaps(corner, [Pair(post, needle, 5.0)], travel, rack)
+    assert gap.proven_gap_mm is not None
+    random = np.random.default_rng(4)
+    poses = random.uniform([travel[0], rack[0]], [travel[1], rack[1]], (10_000, 2))
+    near = [gap.travel_mm, gap.rack_mm] + random.normal(size=(5_000, 2)) * 3.0
+    poses[:5_000] = np.clip(near, [travel[0], rack[0]], [travel[1], rack[1]])
+    motion = solve_motion(corner, poses[:, 0], poses[:, 1])
+    rotations, shifts = relative_poses(motion, "chassis", "wheel")
+    trees = [build_tree(solid.vertices, solid.faces) for solid in (post, needle)]
+    values = distance_at_each(*trees, np.ascontiguousarray(rotations), np.ascontiguousarray(shifts))
+    assert values.min() >= gap.proven_gap_mm - 1e-6
+    assert gap.gap_mm <= values.min() + 0.0501
 
 
 def test_a_limit_stops_the_search_without_changing_what_is_below_it() -> None:

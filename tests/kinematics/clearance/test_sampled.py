@@ -11,11 +11,13 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from manifold3d import Manifold, Mesh
 
+from knucklepath.kinematics.clearance.boxes import build_tree
 from knucklepath.kinematics.clearance.contact import nearest_on_triangle
 from knucklepath.kinematics.clearance.pairs import Pair, PairError, pairs_to_check
 from knucklepath.kinematics.clearance.primitives import ball, cylinder, lathe, merged
 from knucklepath.kinematics.clearance.sampled import sampled_gaps
 from knucklepath.kinematics.clearance.solids import RodStyle, Solid, generated_solids
+from knucklepath.kinematics.clearance.traverse import distance
 from knucklepath.kinematics.errors import MeshError, ReachError
 from knucklepath.kinematics.motion import Motion, solve_motion
 from knucklepath.kinematics.wheel import Corner, Wheel
@@ -316,6 +318,8 @@ def test_distances_equal_an_independent_engine(direction: tuple[float, ...], shi
     still = solve_motion(Corner(LAYOUT.mechanism(LAYOUT.example), wheel), [[0.0]], [[0.0]])
     (gap,) = sampled_gaps(still, [Pair(Solid("cone", "chassis", *cone), Solid("pin", "knuckle", *pin), 1.0)])
     assert gap.gap_mm == pytest.approx(expected, abs=2e-4)
+    own, *_ = distance(build_tree(*cone), build_tree(*pin), np.eye(3), np.zeros(3), 1e300)
+    assert own == pytest.approx(expected, abs=2e-4)
 
 
 def test_pairs_come_from_names_bodies_and_patterns(corner: Corner) -> None:
